@@ -1,0 +1,1 @@
+"""Stage aggregate: extrapolation to infinite size, resampled as a whole."""

@@ -1,0 +1,157 @@
+"""The command line: one subcommand per stage and per errand; reads, calls one function, writes.
+
+Heavy imports stand inside the commands, so that a job starts only what it needs.
+"""
+
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from conetone import __version__
+from conetone.errors import ConetoneError
+
+app = typer.Typer(
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    help="Measure the spectral exponents of causal sets: sprinkle, diagonalise, fit, extrapolate.",
+)
+
+SweepFile = Annotated[
+    Path, typer.Argument(metavar="SWEEP.yaml", help="The sweep file; see config/README.md.")
+]
+Results = Annotated[Path, typer.Option(metavar="DIR", help="Folder that holds one folder per sweep.")]
+RequestText = Annotated[
+    str, typer.Option("--request", metavar="JSON", help="What to compute, as the workflow writes it.")
+]
+Threads = Annotated[int, typer.Option(min=1, metavar="N", help="BLAS threads.")]
+Output = Annotated[Path, typer.Option(metavar="FILE", help="Table to write.")]
+
+
+def main() -> None:
+    """Run the command line; errors that we explain become one message and an exit code."""
+    try:
+        app()
+    except ConetoneError as error:
+        print(f"conetone: {error}", file=sys.stderr)
+        sys.exit(error.exit_code)
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        print(f"conetone {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _global(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version and exit.")
+    ] = False,
+) -> None:
+    pass
+
+
+@app.command(context_settings={"allow_extra_args": True, "allow_interspersed_args": True})
+def run(
+    context: typer.Context,
+    sweep: SweepFile,
+    cores: Annotated[
+        int | None, typer.Option(min=1, metavar="N", help="Jobs at once [default: all cores].")
+    ] = None,
+    results: Results = Path("results"),
+    quiet: Annotated[bool, typer.Option("--quiet", "-q", help="Print nothing but errors.")] = False,
+    json: Annotated[
+        bool, typer.Option("--json", help="Print the outcome as JSON on standard output.")
+    ] = False,
+) -> None:
+    """Compute a sweep, or what is missing of it, and show its exponents.
+
+    Stopped or killed runs go on where they ended when the same command is given again.
+    What follows -- goes to Snakemake.
+
+    Example: conetone run config/first-look.yaml --cores 2
+    """
+    from conetone.run.running import run_sweep
+
+    sys.exit(run_sweep(sweep, results, cores, snakemake_options=context.args, quiet=quiet, as_json=json))
+
+
+@app.command()
+def expand(
+    sweep: SweepFile,
+    results: Results = Path("results"),
+    json: Annotated[bool, typer.Option("--json", help="Print JSON.")] = False,
+) -> None:
+    """Show what a sweep expands into: points, series, jobs, before anything runs.
+
+    Example: conetone expand config/first-look.yaml
+    """
+    from conetone.run.expansion import print_expansion
+
+    print_expansion(sweep, results, as_json=json)
+
+
+@app.command()
+def sprinkle(request: RequestText, output: Output, threads: Threads = 1) -> None:
+    """Draw the orders of one block (a job of the workflow)."""
+    from conetone.stages.sprinkle import sprinkle_block
+    from conetone.sweep.requests import SprinkleRequest
+
+    with _threads(threads):
+        sprinkle_block(SprinkleRequest.parse(request), output)
+
+
+@app.command()
+def diagonalise(
+    request: RequestText,
+    orders: Annotated[Path, typer.Option(metavar="FILE", help="Orders of the block.")],
+    output: Output,
+    threads: Threads = 1,
+) -> None:
+    """Compute the spectra of one operator of one block (a job of the workflow)."""
+    from conetone.stages.diagonalise import diagonalise_block
+    from conetone.sweep.requests import DiagonaliseRequest
+
+    with _threads(threads):
+        diagonalise_block(DiagonaliseRequest.parse(request), orders, output)
+
+
+@app.command()
+def fit(request: RequestText, threads: Threads = 1) -> None:
+    """Fit one series at all its sizes (a job of the workflow)."""
+    from conetone.stages.fit import fit_series
+    from conetone.sweep.requests import FitRequest
+
+    with _threads(threads):
+        fit_series(FitRequest.parse(request))
+
+
+@app.command()
+def aggregate(request: RequestText, threads: Threads = 1) -> None:
+    """Extrapolate every series and collect the tables (a job of the workflow)."""
+    from conetone.stages.aggregate import aggregate_sweep
+    from conetone.sweep.requests import AggregateRequest
+
+    with _threads(threads):
+        aggregate_sweep(AggregateRequest.parse(request))
+
+
+@app.command()
+def figure(request: RequestText) -> None:
+    """Draw the figures of a sweep from its tables (a job of the workflow)."""
+    from conetone.stages.figure import draw_figures
+    from conetone.sweep.requests import FigureRequest
+
+    draw_figures(FigureRequest.parse(request))
+
+
+def _threads(count: int):  # type: ignore[no-untyped-def]
+    import scipy.linalg  # noqa: F401 - loads the BLAS that is to be limited
+    from threadpoolctl import threadpool_limits
+
+    return threadpool_limits(limits=count)

@@ -1,0 +1,1 @@
+"""Stage diagonalise: spectra, each audited by exact sum rules."""

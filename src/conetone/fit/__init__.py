@@ -1,0 +1,1 @@
+"""Stage fit: exponents of one series at each size, over windows and models, with jackknife copies."""

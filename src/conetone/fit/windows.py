@@ -1,0 +1,122 @@
+"""Windows of rank that mean the same at every size, and the bins they are made of."""
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+NUMBER = r"(?:[0-9]+(?:\.[0-9]+)?)"
+# `1.5 * n^0.25`, `n^0.5`: a rank that grows as a power of the size.
+GROWTH_PATTERN = rf"^(?:{NUMBER} \* )?n\^{NUMBER}$"
+
+
+@dataclass(frozen=True)
+class Growth:
+    """A rank that grows with the size n as `coefficient` · n^`power`; both positive, power at most 1."""
+
+    coefficient: float
+    power: float
+
+    @classmethod
+    def parse(cls, text: str) -> "Growth":
+        """Read `1.5 * n^0.25` or `n^0.5`; raises ValueError for anything else."""
+        if not re.fullmatch(GROWTH_PATTERN, text):
+            raise ValueError(text)
+        coefficient, _, power = text.rpartition("n^")
+        growth = cls(float(coefficient.rstrip(" *") or 1), float(power))
+        if not (growth.coefficient > 0 and 0 < growth.power <= 1):
+            raise ValueError(text)
+        return growth
+
+    def at(self, size: int) -> float:
+        """The rank at one size, a real number."""
+        return self.coefficient * size**self.power
+
+    def __str__(self) -> str:
+        return f"{_plain(self.coefficient)} * n^{_plain(self.power)}"
+
+
+def _plain(number: float) -> str:
+    return np.format_float_positional(number, trim="-")
+
+
+@dataclass(frozen=True)
+class Window:
+    """Ranks r with first ≤ r < last, real ends."""
+
+    first: float
+    last: float
+
+
+@dataclass(frozen=True)
+class WindowRule:
+    """A window at every size: both ends grow with n."""
+
+    first: Growth
+    last: Growth
+
+    def at(self, size: int, smallest_rank: int) -> Window:
+        """The window at one size, its lower end not below `smallest_rank`."""
+        return Window(max(self.first.at(size), float(smallest_rank)), self.last.at(size))
+
+    def __str__(self) -> str:
+        return f"{self.first} .. {self.last}"
+
+
+@dataclass(frozen=True)
+class RankBins:
+    """Consecutive bins of rank; bin b holds the ranks edges[b] … edges[b + 1] − 1, counted from 1."""
+
+    edges: tuple[int, ...]
+
+    def __post_init__(self) -> None:
+        if len(self.edges) < 2 or self.edges[0] < 1 or any(np.diff(self.edges) < 1):
+            raise ValueError(f"rank bins need rising edges from 1 on, found {self.edges}")
+
+    @property
+    def count(self) -> int:
+        """Number of bins."""
+        return len(self.edges) - 1
+
+    @property
+    def last(self) -> int:
+        """Largest rank in any bin."""
+        return self.edges[-1] - 1
+
+    def average(self, by_rank: Floats) -> Floats:
+        """Average a quantity given for ranks 1 … last over each bin; last axis ranks, then bins."""
+        edges = np.array(self.edges)
+        sums = np.add.reduceat(by_rank[..., : self.last], edges[:-1] - 1, axis=-1)
+        return np.asarray(sums / np.diff(edges), dtype=np.float64)
+
+    def inside(self, window: Window) -> slice:
+        """The bins that make up a window whose ends are among the edges the bins were made of."""
+        edges = np.array(self.edges)
+        inside = (edges[:-1] >= np.ceil(window.first)) & (edges[1:] <= np.ceil(window.last))
+        indices = np.flatnonzero(inside)
+        return slice(int(indices[0]), int(indices[-1]) + 1) if indices.size else slice(0, 0)
+
+
+def bins_of_windows(windows: Sequence[Window], bins: int) -> RankBins | None:
+    """Log-spaced bins, about `bins` in all, of which every given window is a whole number.
+
+    The ends of all windows are edges; each stretch between neighbouring ends is divided evenly in log rank.
+    Bins without a rank of their own are merged away. None where no rank lies in any window.
+    """
+    ends = sorted({end for window in windows for end in (window.first, window.last)})
+    total = np.log(ends[-1] / ends[0])
+    edges: list[float] = []
+    for low, high in zip(ends[:-1], ends[1:], strict=True):
+        parts = max(1, round(bins * float(np.log(high / low) / total)))
+        edges.extend(np.geomspace(low, high, parts + 1))
+    whole = sorted({int(np.ceil(edge - 1e-9)) for edge in edges})
+    return RankBins(tuple(whole)) if len(whole) > 1 else None
+
+
+def bins_of_spectrum(ranks: int, bins: int) -> RankBins:
+    """Log-spaced bins over all ranks 1 … ranks, at most `bins` of them, for display of a whole spectrum."""
+    return RankBins(tuple(sorted({int(np.ceil(e - 1e-9)) for e in np.geomspace(1, ranks + 1, bins + 1)})))

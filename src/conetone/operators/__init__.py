@@ -1,0 +1,1 @@
+"""Stage operators: the matrices of an order whose spectra are measured."""

@@ -1,0 +1,1 @@
+"""Tables on disk: schemas, atomic and checksummed files, provenance."""

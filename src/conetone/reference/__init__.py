@@ -1,0 +1,1 @@
+"""Closed forms and expected exponents, each with its source and its standing."""

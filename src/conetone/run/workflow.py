@@ -1,0 +1,53 @@
+"""Where conetone and Snakemake meet: the plan that the Snakefile asks for, and the workflow's files."""
+
+import os
+import shlex
+import sysconfig
+from pathlib import Path
+from typing import Any
+
+import conetone
+from conetone.errors import ConetoneError
+from conetone.sweep.definition import resolve_sweep
+from conetone.sweep.plan import Plan
+
+RESULTS_KEY = "results"
+DEFAULT_RESULTS = "results"
+
+
+def plan_of_config(config: dict[str, Any]) -> tuple[Plan, str]:
+    """The plan of Snakemake's merged configuration, and the folder of the sweep's results.
+
+    `results` beside the fields of the sweep file is the folder that holds one folder per sweep.
+    """
+    from snakemake.exceptions import WorkflowError
+
+    values = {key: _plain(value) for key, value in config.items()}
+    results = values.pop(RESULTS_KEY, DEFAULT_RESULTS)
+    if not values:
+        raise WorkflowError("No sweep: add --configfile SWEEP.yaml, such as config/first-look.yaml.")
+    try:
+        plan = Plan(resolve_sweep(values))
+    except ConetoneError as error:
+        raise WorkflowError(str(error)) from None
+    folder = Path(str(results)) / plan.sweep.name
+    return plan, str(folder.absolute())
+
+
+def _plain(value: Any) -> Any:
+    """Snakemake's ordered mappings as plain ones."""
+    if isinstance(value, dict):
+        return {key: _plain(inner) for key, inner in value.items()}
+    return [_plain(inner) for inner in value] if isinstance(value, list) else value
+
+
+def path_with_this_conetone() -> str:
+    """PATH for the shells of jobs, quoted, with the `conetone` of this Python environment first."""
+    return shlex.quote(os.pathsep.join([sysconfig.get_path("scripts"), os.environ.get("PATH", os.defpath)]))
+
+
+def snakefile() -> Path:
+    """The Snakefile: of the clone when conetone runs from one, else the copy inside the installed package."""
+    package = Path(conetone.__file__).parent
+    clone = package.parents[1] / "workflow" / "Snakefile"
+    return clone if clone.is_file() else package / "workflow" / "Snakefile"

@@ -1,0 +1,1 @@
+"""Stage sprinkle: random orders, naturally labelled and bit-packed."""

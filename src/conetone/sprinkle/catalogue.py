@@ -1,0 +1,90 @@
+"""Every ensemble by name: its parameters, its sampler, and what is known about it, with sources."""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Literal, Protocol
+
+import numpy as np
+
+from conetone.reference.flat import ordering_fraction_of_diamond
+from conetone.sprinkle.layered import kleitman_rothschild
+from conetone.sprinkle.minkowski import minkowski_box, minkowski_diamond
+from conetone.sprinkle.order import Order
+
+Value = int | float
+Parameters = Mapping[str, Value]
+
+
+class Sampler(Protocol):
+    """Draws one order of so many elements from a generator; parameters come by keyword."""
+
+    def __call__(self, elements: int, generator: np.random.Generator, **parameters: int) -> Order: ...
+
+
+@dataclass(frozen=True)
+class Parameter:
+    """One parameter of an ensemble, a whole number from `minimum` to `maximum`."""
+
+    name: str
+    minimum: int
+    maximum: int
+    meaning: str
+
+
+@dataclass(frozen=True)
+class Ensemble:
+    """An ensemble of orders and its known facts.
+
+    `region` names the spacetime region it is sprinkled into, None where the orders resemble no manifold.
+    `ordering_fraction` gives the exact expected ordering fraction of given parameters, where one is known.
+    """
+
+    name: str
+    sampler: Sampler
+    parameters: tuple[Parameter, ...]
+    meaning: str
+    source: str
+    region: Literal["diamond", "box"] | None = None
+    ordering_fraction: Callable[[Parameters], float] | None = None
+
+
+DIMENSION = Parameter("dimension", 2, 7, "spacetime dimension, time included")
+
+ENSEMBLES: Mapping[str, Ensemble] = {
+    ensemble.name: ensemble
+    for ensemble in (
+        Ensemble(
+            "minkowski-diamond",
+            minkowski_diamond,
+            (DIMENSION,),
+            "uniform sprinkling into a causal diamond of flat spacetime",
+            "Bombelli, Lee, Meyer & Sorkin 1987; ordering fraction: Myrheim 1978, Meyer 1988",
+            region="diamond",
+            ordering_fraction=lambda parameters: ordering_fraction_of_diamond(int(parameters["dimension"])),
+        ),
+        Ensemble(
+            "minkowski-box",
+            minkowski_box,
+            (DIMENSION,),
+            "uniform sprinkling into a unit hypercube of flat spacetime, time along one edge",
+            "Bombelli, Lee, Meyer & Sorkin 1987",
+            region="box",
+        ),
+        Ensemble(
+            "kleitman-rothschild",
+            kleitman_rothschild,
+            (),
+            "three random layers of n/4, n/2, n/4 elements: the typical finite order, no spacetime",
+            "Kleitman & Rothschild 1975",
+        ),
+    )
+}
+
+PARAMETER_NAMES: tuple[str, ...] = tuple(
+    dict.fromkeys(parameter.name for ensemble in ENSEMBLES.values() for parameter in ensemble.parameters)
+)
+
+
+def sprinkle(ensemble: str, parameters: Parameters, elements: int, generator: np.random.Generator) -> Order:
+    """Draw one order of a catalogued ensemble; raises KeyError for a name that is not catalogued."""
+    return ENSEMBLES[ensemble].sampler(elements, generator, **{k: int(v) for k, v in parameters.items()})

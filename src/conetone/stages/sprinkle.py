@@ -1,0 +1,57 @@
+"""Stage sprinkle: draw the orders of one block."""
+
+from pathlib import Path
+from typing import Any
+
+from conetone.records.tables import ORDERS
+from conetone.sprinkle.catalogue import PARAMETER_NAMES, sprinkle
+from conetone.sprinkle.order import Order
+from conetone.stages.block import run_block
+from conetone.sweep.points import Point
+from conetone.sweep.requests import SprinkleRequest
+from conetone.sweep.seeds import Purpose, generator_for
+
+RESULTS = ("elements", "relations", "links", "height", "ordering_fraction", "digest", "packed_relation")
+
+
+def draw(point: Point, root_seed: int, replicate: int) -> Order:
+    """The order of one replicate; it depends on these three and nothing else."""
+    elements = point.size
+    if point.choice.count == "poisson":
+        counting = generator_for(root_seed, point.canonical, Purpose.ELEMENT_COUNT, replicate)
+        elements = int(counting.poisson(point.size))
+    generator = generator_for(root_seed, point.canonical, Purpose.SPRINKLING, replicate)
+    return sprinkle(point.choice.ensemble, dict(point.choice.parameters), elements, generator)
+
+
+def sprinkle_block(request: SprinkleRequest, output: Path) -> None:
+    """Write the orders table of one block."""
+    point = request.point
+
+    def empty(replicate: int) -> dict[str, Any]:
+        return {**replicate_keys(point, replicate), **dict.fromkeys(RESULTS)}
+
+    def compute(replicate: int) -> dict[str, Any]:
+        order = draw(point, request.root_seed, replicate)
+        return {
+            "elements": order.elements,
+            "relations": order.relations,
+            "links": order.links.pairs,
+            "height": order.height,
+            "ordering_fraction": order.ordering_fraction if order.elements > 1 else None,
+            "digest": order.digest,
+            "packed_relation": order.relation.to_bytes(),
+        }
+
+    replicates = range(request.first, request.stop)
+    run_block(output, ORDERS, request.text(), replicates, compute, empty, lambda row: row["status"] == "ok")
+
+
+def replicate_keys(point: Point, replicate: int) -> dict[str, Any]:
+    """Key columns of one replicate."""
+    return {
+        "point": point.name,
+        **point.choice.key_columns(PARAMETER_NAMES),
+        "size": point.size,
+        "replicate": replicate,
+    }

@@ -1,0 +1,41 @@
+"""What a reader should know before quoting an exponent, as sentences in its row."""
+
+from collections.abc import Mapping
+from typing import Any
+
+FIRST_LOOK_SIZES = 5
+LARGE_REDUCED_CHI2 = 3.0
+LARGE_DEVIATION = 5.0
+# Unexplained scatter of log λ that a reader should know of.
+LARGE_SCATTER = 0.03
+# Ratios of neighbouring sizes that differ by more than this are not geometric.
+UNEVEN_RATIOS = 1.5
+
+
+def warnings_of(row: Mapping[str, Any]) -> list[str]:
+    """Warnings about one row of the exponents table, worst first."""
+    found = []
+    lost = row["replicates_attempted"] - row["replicates_used"]
+    if lost:
+        found.append(
+            f"{lost} of {row['replicates_attempted']} replicates are not used: see status in spectra/"
+        )
+    expected, error = row["ordering_fraction_expected"], row["ordering_fraction_error"]
+    if expected is not None and error:
+        deviation = abs(row["ordering_fraction"] - expected) / error
+        if deviation > LARGE_DEVIATION:
+            found.append(f"the ordering fraction is {deviation:.1f} σ from {expected:.4g}")
+    if row["exponent"] is None:
+        return found
+    if len(row["sizes"]) < FIRST_LOOK_SIZES:
+        found.append(f"first look: {len(row['sizes'])} sizes, a published number needs {FIRST_LOOK_SIZES}")
+    if row["scatter"] > LARGE_SCATTER:
+        found.append(
+            f"steps in the spectrum: up to {row['scatter']:.0%} off a power law, beyond statistical error"
+        )
+    if row["reduced_chi2"] > LARGE_REDUCED_CHI2:
+        found.append(f"the sizes follow no single power: χ²/ν = {row['reduced_chi2']:.1f}")
+    ratios = [b / a for a, b in zip(row["sizes"][:-1], row["sizes"][1:], strict=True)]
+    if max(ratios) > UNEVEN_RATIOS * min(ratios):
+        found.append("the sizes are not geometric")
+    return found

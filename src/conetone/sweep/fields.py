@@ -1,0 +1,187 @@
+"""The fields of a sweep file, as pydantic models: types, ranges, defaults, and what each means.
+
+The one source of workflow/schemas/sweep.schema.json and of config/README.md. A field that takes one value
+or a list is a list here; `one_or_many` makes a list of one value.
+"""
+
+from typing import Annotated, Any, Literal, get_args
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, StringConstraints, create_model
+
+from conetone.fit.models import MODELS
+from conetone.fit.windows import GROWTH_PATTERN
+from conetone.operators.catalogue import OPERATORS, PARTS
+from conetone.sprinkle.catalogue import ENSEMBLES, Ensemble, Parameter
+
+NAME_PATTERN = r"^[a-z0-9]+(-[a-z0-9]+)*$"
+LONGEST_NAME = 60
+LARGEST_SEED = 2**63 - 1
+LARGEST_SIZE = 10_000_000
+MOST_REPLICATES = 10_000_000
+
+
+class Fields(BaseModel):
+    """A mapping of the sweep file: nothing unknown, nothing converted, no NaN."""
+
+    model_config = ConfigDict(extra="forbid", strict=True, frozen=True, allow_inf_nan=False)
+
+
+def described(meaning: str, allowed: str, **constraints: Any) -> Any:
+    """A field with its meaning and, for error messages and the documentation, what is allowed in words."""
+    return Field(description=meaning, json_schema_extra={"x-allowed": allowed}, **constraints)
+
+
+def one_or_many(item: Any) -> BeforeValidator:
+    """Take a single value for a list of one; both forms stand in the JSON Schema."""
+    return BeforeValidator(
+        lambda value: value if isinstance(value, list) else [value], json_schema_input_type=item | list[item]
+    )
+
+
+def names(options: Any) -> str:
+    """`a, b or c`."""
+    *head, last = [str(option) for option in options]
+    return f"{', '.join(head)} or {last}" if head else last
+
+
+Dimension = Annotated[int, Field(ge=2)]
+Size = Annotated[int, Field(ge=2, le=LARGEST_SIZE)]
+Replicates = Annotated[int, Field(ge=1, le=MOST_REPLICATES)]
+GrowthText = Annotated[str, StringConstraints(pattern=GROWTH_PATTERN)]
+Omega = Annotated[float, Field(gt=0, le=4)]
+PartName = Literal["symmetric", "antisymmetric"]
+MatrixName = Literal["causal", "link"]
+ModelName = Literal["power", "top-correction"]
+assert get_args(PartName) == PARTS
+assert get_args(MatrixName) == tuple(OPERATORS)
+assert get_args(ModelName) == tuple(MODELS)
+
+
+def _ensemble_fields(ensemble: Ensemble) -> type[Fields]:
+    fields: dict[str, Any] = {
+        "ensemble": (Literal[ensemble.name], described("name of the ensemble", ensemble.name)),
+    }
+    for parameter in ensemble.parameters:
+        fields[parameter.name] = _parameter_field(parameter)
+    return create_model(
+        "".join(word.capitalize() for word in ensemble.name.split("-")),
+        __base__=Fields,
+        __doc__=f"{ensemble.meaning} ({ensemble.source})",
+        **fields,
+    )
+
+
+def _parameter_field(parameter: Parameter) -> tuple[Any, Any]:
+    item = Annotated[int, Field(ge=parameter.minimum, le=parameter.maximum)]
+    kind = Annotated[list[item], one_or_many(item)]  # type: ignore[valid-type]
+    allowed = (
+        f"a whole number from {parameter.minimum} to {parameter.maximum}, or a list of them: one series each"
+    )
+    return kind, described(parameter.meaning, allowed, min_length=1)
+
+
+ENSEMBLE_FIELDS: dict[str, type[Fields]] = {name: _ensemble_fields(e) for name, e in ENSEMBLES.items()}
+EnsembleFields: Any = ENSEMBLE_FIELDS["minkowski-diamond"]
+for _model in list(ENSEMBLE_FIELDS.values())[1:]:
+    EnsembleFields = EnsembleFields | _model
+
+
+class OperatorFields(Fields):
+    """One matrix of the order, and the self-adjoint parts whose spectra are taken."""
+
+    matrix: MatrixName = described(
+        "; ".join(f"`{operator.name}`: {operator.meaning}" for operator in OPERATORS.values()),
+        names(OPERATORS),
+    )
+    part: Annotated[list[PartName], one_or_many(PartName)] = described(
+        "`symmetric`: M + Mᵀ; `antisymmetric`: i(M − Mᵀ)", f"{names(PARTS)}, or a list of them", min_length=1
+    )
+
+
+class SpectrumFields(Fields):
+    """Which eigenvalues are computed."""
+
+    extent: Literal["full"] = described("`full`: every eigenvalue", "full", default="full")
+
+
+class WindowFields(Fields):
+    """The grid of fit windows, every `from` with every `to`, and what is fitted in them.
+
+    Both ends grow with the size n, so that a window means the same at every size.
+    """
+
+    model_config = ConfigDict(validate_by_name=False, validate_by_alias=True)
+
+    from_: Annotated[list[GrowthText], one_or_many(GrowthText)] = described(
+        "lower ends", "`c * n^b` with c > 0 and 0 < b ≤ 1, such as 0.25 * n^0.5, or a list of them",
+        min_length=1, alias="from", default=["0.25 * n^0.5", "0.4 * n^0.5"],
+    )  # fmt: skip
+    to: Annotated[list[GrowthText], one_or_many(GrowthText)] = described(
+        "upper ends, exclusive", "`c * n^b` with c > 0 and 0 < b ≤ 1, such as 0.25 * n^0.75, or a list of them",
+        min_length=1, default=["0.25 * n^0.75", "0.35 * n^0.75"],
+    )  # fmt: skip
+    smallest_rank: int = described(
+        "no window begins below this rank", "a whole number from 1 to 1000", ge=1, le=1000, default=2
+    )
+    bins: int = described(
+        "log-spaced rank bins over all windows together",
+        "a whole number from 4 to 100",
+        ge=4,
+        le=100,
+        default=12,
+    )
+    models: Annotated[list[ModelName], one_or_many(ModelName)] = described(
+        "; ".join(f"`{model.name}`: {model.meaning}" for model in MODELS.values()),
+        f"{names(MODELS)}, or a list of them", min_length=1, default=list(MODELS),
+    )  # fmt: skip
+
+
+class ExtrapolationFields(Fields):
+    """α(n) = α∞ + a n^−ω, averaged over ω and over the number of smallest sizes left out."""
+
+    omegas: Annotated[list[Omega], one_or_many(Omega)] = described(
+        "the set of ω averaged over", "a number above 0 and up to 4, or a list of them",
+        min_length=1, default=[0.5, 0.75, 1.0],
+    )  # fmt: skip
+    most_sizes_cut: int = described(
+        "leave out none, one, … up to this many of the smallest sizes (three always stay)",
+        "a whole number from 0 to 20", ge=0, le=20, default=2,
+    )  # fmt: skip
+
+
+class SweepFields(Fields):
+    """A sweep: one study."""
+
+    sweep: Annotated[str, StringConstraints(pattern=NAME_PATTERN, max_length=LONGEST_NAME)] = described(
+        "name of the sweep; its results stand in a folder of this name",
+        f"small letters, digits and single hyphens between them, at most {LONGEST_NAME} characters",
+    )
+    root_seed: int = described(
+        "all random streams derive from it", f"a whole number from 0 to {LARGEST_SEED}", ge=0, le=LARGEST_SEED
+    )
+    ensembles: list[Annotated[EnsembleFields, Field(discriminator="ensemble")]] = described(
+        "the ensembles, each with its parameters; a list of values gives one series each",
+        "a list of at least one ensemble", min_length=1,
+    )  # fmt: skip
+    sizes: Annotated[list[Size], one_or_many(Size)] = described(
+        "numbers of elements, rising, best in equal ratios; at least three to extrapolate, five to publish",
+        f"rising whole numbers from 2 to {LARGEST_SIZE}, best in equal ratios",
+        min_length=1,
+    )
+    replicates: Annotated[list[Replicates], one_or_many(Replicates)] = described(
+        "orders per point: one number for all sizes, or a list with one for each size",
+        f"a whole number from 1 to {MOST_REPLICATES}, or a list with one for each size",
+        min_length=1,
+    )
+    count: Literal["fixed", "poisson"] = described(
+        "`fixed`: every order has `size` elements; `poisson`: a Poisson number with that mean",
+        "fixed or poisson", default="fixed",
+    )  # fmt: skip
+    operators: list[OperatorFields] = described(
+        "the matrices and parts whose spectra are taken", "a list of at least one operator", min_length=1
+    )
+    spectrum: SpectrumFields = described("which eigenvalues", "a mapping", default=SpectrumFields())
+    windows: WindowFields = described("fit windows and models", "a mapping", default=WindowFields())
+    extrapolation: ExtrapolationFields = described(
+        "finite-size scaling", "a mapping", default=ExtrapolationFields()
+    )
