@@ -4,6 +4,7 @@ Heavy imports stand inside the commands, so that a job starts only what it needs
 """
 
 import sys
+from contextlib import AbstractContextManager
 from pathlib import Path
 from typing import Annotated
 
@@ -150,8 +151,9 @@ def figure(request: RequestText) -> None:
     draw_figures(FigureRequest.parse(request))
 
 
-def _threads(count: int):  # type: ignore[no-untyped-def]
-    import scipy.linalg  # noqa: F401 - loads the BLAS that is to be limited
+def _threads(count: int) -> AbstractContextManager[object]:
+    """Limit the BLAS libraries that are loaded by now: import a stage before entering."""
     from threadpoolctl import threadpool_limits
 
-    return threadpool_limits(limits=count)
+    limits: AbstractContextManager[object] = threadpool_limits(limits=count)
+    return limits

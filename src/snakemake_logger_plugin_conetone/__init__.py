@@ -23,13 +23,15 @@ class LogHandlerSettings(LogHandlerSettingsBase):
     )
 
 
-class LogHandler(LogHandlerBase):  # type: ignore[misc]
+class LogHandler(LogHandlerBase):
     """Appends the events that a progress display needs."""
 
     def __post_init__(self) -> None:
-        if self.settings is None or self.settings.events is None:
+        """Open the events file; line-buffered, so that a reader sees every whole event."""
+        events = getattr(self.settings, "events", None)
+        if events is None:
             raise ValueError("--logger conetone needs --logger-conetone-events FILE")
-        self._file = Path(self.settings.events).open("a", encoding="utf-8", buffering=1)
+        self._file = Path(events).open("a", encoding="utf-8", buffering=1)  # noqa: SIM115 - closed in close()
 
     def emit(self, record: logging.LogRecord) -> None:
         """Write one event, if it is of interest."""

@@ -44,7 +44,7 @@ class Candidate:
 def stack_copies(
     sizes: Sequence[int], replicates: Sequence[int], candidates: Sequence[Candidate]
 ) -> SizeEstimates:
-    """Lay out estimates so that copy 0 uses everything and every other copy misses one replicate of one size."""
+    """Lay out estimates: copy 0 uses everything, every other copy misses one replicate of one size."""
     copies = 1 + sum(replicates)
     shape = (copies, len(sizes), len(candidates))
     arrays = {name: np.full(shape, np.nan) for name in ("exponent", "statistical", "misfit", "chi2")}

@@ -84,7 +84,7 @@ def extrapolate(
         return None
     weights = weights_of(total, axis=(1, 2))  # (copies, lines, candidates)
     limit = _average(weights, lines, np.array([np.inf]))
-    reduced = np.stack([line.chi2[0] / line.degrees[0] for line in lines])
+    reduced = np.stack([line.chi2[0] / np.maximum(line.degrees[0], 1) for line in lines])
     return Extrapolation(
         limit=limit,
         curve=_average(weights, lines, curve_sizes),

@@ -28,8 +28,9 @@ def weighted_least_squares(design: Floats, values: Floats, errors: Floats) -> Li
     The pseudo-inverse (singular values) of the scaled design keeps nearly collinear terms harmless.
     """
     scaled = design / errors[..., np.newaxis]
-    inverse = np.linalg.pinv(scaled)
+    inverse = np.asarray(np.linalg.pinv(scaled), dtype=np.float64)
     gain = inverse / errors[..., np.newaxis, :]
     parameters = np.einsum("...km,...m->...k", gain, values)
     residuals = (values - parameters @ design.T) / errors
-    return LinearFit(parameters, gain, inverse @ np.swapaxes(inverse, -1, -2), (residuals**2).sum(axis=-1))
+    covariance: Floats = inverse @ np.swapaxes(inverse, -1, -2)
+    return LinearFit(parameters, gain, covariance, (residuals**2).sum(axis=-1))

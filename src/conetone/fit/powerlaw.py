@@ -131,7 +131,7 @@ def _unexplained_scatter(design: Floats, means: Floats, errors: Floats) -> Float
 
     def excess(variance: Floats) -> Floats:
         total = np.sqrt(errors**2 + variance[:, np.newaxis])
-        return weighted_least_squares(design, means, total).chi2 - degrees
+        return np.asarray(weighted_least_squares(design, means, total).chi2 - degrees)
 
     low = np.zeros(len(means))
     # unweighted residuals bound τ²: with it alone, χ² cannot exceed its degrees of freedom

@@ -13,8 +13,8 @@ from conetone.fit.windows import bins_of_spectrum
 class Profile:
     """Binned spectrum over all ranks; all arrays have shape (bins,).
 
-    `rank` is the geometric mean rank of a bin, `log_magnitude` the mean of log λ. `slope` is −Δ log λ / Δ log r
-    between this bin and the next, at `slope_rank`; the last bin has none (NaN).
+    `rank` is the geometric mean rank of a bin, `log_magnitude` the mean of log λ. `slope` is
+    −Δ log λ / Δ log r between this bin and the next, at `slope_rank`; the last bin has none (NaN).
     """
 
     rank: Floats

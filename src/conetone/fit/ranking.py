@@ -20,7 +20,7 @@ def ranked_magnitudes(eigenvalues: Floats, part: Part) -> Floats:
     magnitudes = eigenvalues[eigenvalues > 0] if part == "antisymmetric" else np.abs(eigenvalues)
     magnitudes = np.sort(magnitudes)[::-1]
     rounding = len(eigenvalues) * np.finfo(np.float64).eps * magnitudes[:1].sum()
-    return magnitudes[magnitudes > rounding]
+    return np.asarray(magnitudes[magnitudes > rounding])
 
 
 @dataclass(frozen=True)
@@ -39,7 +39,7 @@ class BinnedLogs:
     @property
     def mean(self) -> Floats:
         """Mean over replicates, shape (bins,)."""
-        return self.values.mean(axis=0)
+        return np.asarray(self.values.mean(axis=0))
 
     @property
     def error(self) -> Floats:
@@ -55,4 +55,4 @@ def bin_logs(spectra: list[Floats], bins: RankBins) -> BinnedLogs:
 
 def standard_error(values: Floats) -> Floats:
     """Standard error of the mean over axis 0, from the sample variance."""
-    return values.std(axis=0, ddof=1) / np.sqrt(len(values))
+    return np.asarray(values.std(axis=0, ddof=1) / np.sqrt(len(values)))

@@ -3,6 +3,7 @@
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,7 +35,7 @@ class Growth:
 
     def at(self, size: int) -> float:
         """The rank at one size, a real number."""
-        return self.coefficient * size**self.power
+        return self.coefficient * float(size**self.power)
 
     def __str__(self) -> str:
         return f"{_plain(self.coefficient)} * n^{_plain(self.power)}"
@@ -50,6 +51,11 @@ class Window:
 
     first: float
     last: float
+
+
+def _rank_from(end: float) -> int:
+    """The first rank at or above a real end, rounding errors of the end forgiven."""
+    return int(np.ceil(end - 1e-9))
 
 
 @dataclass(frozen=True)
@@ -96,7 +102,7 @@ class RankBins:
     def inside(self, window: Window) -> slice:
         """The bins that make up a window whose ends are among the edges the bins were made of."""
         edges = np.array(self.edges)
-        inside = (edges[:-1] >= np.ceil(window.first)) & (edges[1:] <= np.ceil(window.last))
+        inside = (edges[:-1] >= _rank_from(window.first)) & (edges[1:] <= _rank_from(window.last))
         indices = np.flatnonzero(inside)
         return slice(int(indices[0]), int(indices[-1]) + 1) if indices.size else slice(0, 0)
 
@@ -110,13 +116,13 @@ def bins_of_windows(windows: Sequence[Window], bins: int) -> RankBins | None:
     ends = sorted({end for window in windows for end in (window.first, window.last)})
     total = np.log(ends[-1] / ends[0])
     edges: list[float] = []
-    for low, high in zip(ends[:-1], ends[1:], strict=True):
+    for low, high in pairwise(ends):
         parts = max(1, round(bins * float(np.log(high / low) / total)))
         edges.extend(np.geomspace(low, high, parts + 1))
-    whole = sorted({int(np.ceil(edge - 1e-9)) for edge in edges})
+    whole = sorted({_rank_from(edge) for edge in edges})
     return RankBins(tuple(whole)) if len(whole) > 1 else None
 
 
 def bins_of_spectrum(ranks: int, bins: int) -> RankBins:
     """Log-spaced bins over all ranks 1 … ranks, at most `bins` of them, for display of a whole spectrum."""
-    return RankBins(tuple(sorted({int(np.ceil(e - 1e-9)) for e in np.geomspace(1, ranks + 1, bins + 1)})))
+    return RankBins(tuple(sorted({_rank_from(edge) for edge in np.geomspace(1, ranks + 1, bins + 1)})))

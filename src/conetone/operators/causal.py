@@ -8,4 +8,4 @@ from conetone.sprinkle.order import Order
 
 def causal_matrix(order: Order) -> NDArray[np.float64]:
     """C as float64 of shape (n, n), strictly upper triangular; C[i, j] = 1 where i precedes j."""
-    return order.relation.dense(np.float64)  # type: ignore[return-value]
+    return order.relation.dense(np.float64)

@@ -8,4 +8,4 @@ from conetone.sprinkle.order import Order
 
 def link_matrix(order: Order) -> NDArray[np.float64]:
     """L as float64 of shape (n, n), strictly upper triangular; L[i, j] = 1 where j covers i."""
-    return order.links.dense(np.float64)  # type: ignore[return-value]
+    return order.links.dense(np.float64)

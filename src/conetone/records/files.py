@@ -90,7 +90,9 @@ def content_digest(data: pa.Table) -> str:
     digest = hashlib.sha256()
     for name in data.column_names:
         column = data.column(name).combine_chunks()
-        digest.update(f"\n{name} {column.type} {len(column)}\n".encode())
+        # Arrow calls the entries of a list `item` in memory and `element` once read from a file
+        kind = f"list of {column.type.value_type}" if pa.types.is_list(column.type) else column.type
+        digest.update(f"\n{name} {kind} {len(column)}\n".encode())
         if column.type == pa.list_(pa.float64()):
             digest.update(json.dumps([None if v is None else len(v) for v in column.to_pylist()]).encode())
             digest.update(np.asarray(column.flatten().to_numpy(zero_copy_only=False)).tobytes())

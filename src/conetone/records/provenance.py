@@ -14,7 +14,8 @@ def software() -> dict[str, str]:
     """Names and versions, the BLAS and its threads included; eigenvalues depend on them in the last bits."""
     packages = {name: version(name) for name in ("numpy", "scipy", "pyarrow")}
     blas = [
-        f"{pool['internal_api']} {pool['version']} {pool.get('architecture', '')}, {pool['num_threads']} threads"
+        f"{pool['internal_api']} {pool['version']} {pool.get('architecture', '')},"
+        f" {pool['num_threads']} threads"
         for pool in threadpool_info()
         if pool["user_api"] == "blas"
     ]

@@ -12,6 +12,8 @@ from conetone.sweep.definition import resolve_sweep
 from conetone.sweep.plan import Plan
 
 RESULTS_KEY = "results"
+# Environment of every job of a sweep: its folder. Of everything that `conetone run` starts: the run.
+FOLDER_MARK, RUN_MARK = "CONETONE_FOLDER", "CONETONE_RUN"
 DEFAULT_RESULTS = "results"
 
 
@@ -31,7 +33,7 @@ def plan_of_config(config: dict[str, Any]) -> tuple[Plan, str]:
     except ConetoneError as error:
         raise WorkflowError(str(error)) from None
     folder = Path(str(results)) / plan.sweep.name
-    return plan, str(folder.absolute())
+    return plan, str(folder.resolve())
 
 
 def _plain(value: Any) -> Any:
@@ -41,9 +43,12 @@ def _plain(value: Any) -> Any:
     return [_plain(inner) for inner in value] if isinstance(value, list) else value
 
 
-def path_with_this_conetone() -> str:
-    """PATH for the shells of jobs, quoted, with the `conetone` of this Python environment first."""
-    return shlex.quote(os.pathsep.join([sysconfig.get_path("scripts"), os.environ.get("PATH", os.defpath)]))
+def shell_prefix(folder: str) -> str:
+    """What the shell of every job begins with: this environment's `conetone` first on PATH, and the mark."""
+    path = os.pathsep.join([sysconfig.get_path("scripts"), os.environ.get("PATH", os.defpath)])
+    assignments = {"PATH": path, FOLDER_MARK: folder}
+    text = " ".join(f"{name}={shlex.quote(value)}" for name, value in assignments.items())
+    return f"export {text}; ".replace("{", "{{").replace("}", "}}")
 
 
 def snakefile() -> Path:

@@ -2,7 +2,7 @@
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from typing import Literal
 
 import numpy as np
 
@@ -13,12 +13,6 @@ from conetone.sprinkle.order import Order
 
 Value = int | float
 Parameters = Mapping[str, Value]
-
-
-class Sampler(Protocol):
-    """Draws one order of so many elements from a generator; parameters come by keyword."""
-
-    def __call__(self, elements: int, generator: np.random.Generator, **parameters: int) -> Order: ...
 
 
 @dataclass(frozen=True)
@@ -35,12 +29,13 @@ class Parameter:
 class Ensemble:
     """An ensemble of orders and its known facts.
 
-    `region` names the spacetime region it is sprinkled into, None where the orders resemble no manifold.
+    `sampler(elements, generator, **parameters)` draws one order. `region` names the spacetime
+    region it is sprinkled into, None where the orders resemble no manifold.
     `ordering_fraction` gives the exact expected ordering fraction of given parameters, where one is known.
     """
 
     name: str
-    sampler: Sampler
+    sampler: Callable[..., Order]
     parameters: tuple[Parameter, ...]
     meaning: str
     source: str

@@ -55,12 +55,12 @@ class Order:
     @cached_property
     def links(self) -> PackedRelation:
         """The transitive reduction: related pairs with nothing between them."""
-        return PackedRelation.from_matrix(self.relation.dense() & ~self._has_element_between())
+        return PackedRelation.from_matrix(self.relation.dense(np.bool_) & ~self._has_element_between())
 
     @property
     def is_transitive(self) -> bool:
         """Whether i → j → k implies i → k, for every triple."""
-        return not bool((self._has_element_between() & ~self.relation.dense()).any())
+        return not bool((self._has_element_between() & ~self.relation.dense(np.bool_)).any())
 
     def _has_element_between(self) -> Matrix:
         # Counts of elements between two others stay below 2²⁴, where float32 is exact.
@@ -73,6 +73,6 @@ class Order:
 
     @cached_property
     def digest(self) -> str:
-        """SHA-256 of the element count and the packed relation, in hexadecimal: equal orders, equal digests."""
+        """SHA-256 of element count and packed relation, in hexadecimal: equal orders, equal digests."""
         header = f"order of {self.elements} elements\n".encode()
         return hashlib.sha256(header + self.relation.to_bytes()).hexdigest()

@@ -6,6 +6,7 @@ little-endian 64-bit words, so n elements take about n²/16 bytes: 66 kB at n = 
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +17,7 @@ WORD = 64
 
 Matrix = NDArray[np.bool_]
 Words = NDArray[np.uint64]
+Entry = TypeVar("Entry", np.bool_, np.float32, np.float64)
 
 
 def words_in_a_row(elements: int) -> int:
@@ -111,7 +113,7 @@ class PackedRelation:
             dense[:, start:] = bits
             yield start, dense
 
-    def dense(self, dtype: type[np.generic] = np.bool_) -> NDArray[np.generic]:
+    def dense(self, dtype: type[Entry]) -> NDArray[Entry]:
         """The relation as a matrix of shape (n, n) of the given type, ones where i → j."""
         matrix = np.zeros((self.elements, self.elements), dtype=dtype)
         for start, rows in self.row_groups():

@@ -2,7 +2,6 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -172,7 +171,7 @@ def _bin_rows(
     data = vector.data
     edges = data.bins.edges
     ranks = np.exp(data.bins.average(np.log(np.arange(1, data.bins.last + 1))))
-    rows = []
+    rows: list[Row] = []
     for b in range(data.bins.count):
         fitted = float(fit.fitted[b]) if fit and np.isfinite(fit.fitted[b]) else None
         mean, error = float(data.mean[b]), float(data.error[b])

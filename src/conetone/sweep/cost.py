@@ -11,36 +11,36 @@ from conetone.sweep.points import OperatorChoice
 MIB = 2**20
 
 # One eigenproblem of n = 1000 through LAPACK, seconds.
-SECONDS_AT_1000 = {"symmetric": 0.11, "antisymmetric": 0.38}
+SECONDS_AT_1000 = {"symmetric": 0.11, "antisymmetric": 0.21}
 # Sprinkling, links and height of n = 1000, seconds.
 SPRINKLE_SECONDS_AT_1000 = 0.05
 # Starting a job: imports.
 START_SECONDS = 1.0
 # Of fitting one series and of everything after it.
 FIT_SECONDS, CLOSING_SECONDS = 1.5, 8.0
-# Bytes per matrix entry at the peak: the real matrix, its part (real or complex) and LAPACK's copy.
-BYTES_AN_ENTRY = {"symmetric": 24, "antisymmetric": 48}
+# Bytes per matrix entry at the peak: the matrix, its transpose's sum or difference, and LAPACK's copy.
+BYTES_AN_ENTRY = 24
 BASE_MIB = 150
 
 
 def diagonalise_seconds(size: int, operator: OperatorChoice) -> float:
     """Expected seconds of one full spectrum."""
-    return SECONDS_AT_1000[operator.part] * (size / 1000) ** 3
+    return SECONDS_AT_1000[operator.part] * float(size / 1000) ** 3
 
 
 def sprinkle_seconds(size: int) -> float:
     """Expected seconds of drawing one order, with its links and height."""
-    return 1e-3 + SPRINKLE_SECONDS_AT_1000 * (size / 1000) ** 2.5
+    return 1e-3 + SPRINKLE_SECONDS_AT_1000 * float((size / 1000) ** 2.5)
 
 
-def diagonalise_mib(size: int, operator: OperatorChoice) -> float:
-    """Expected peak memory, MiB, of one full spectrum."""
-    return BASE_MIB + BYTES_AN_ENTRY[operator.part] * size**2 / MIB
+def diagonalise_mib(size: int) -> float:
+    """Expected peak memory, MiB, of one full spectrum of either part."""
+    return BASE_MIB + BYTES_AN_ENTRY * size**2 / MIB
 
 
-def largest_size(operator: OperatorChoice, available_mib: float) -> int:
+def largest_size(available_mib: float) -> int:
     """Largest size whose full spectrum fits."""
-    return int((max(available_mib - BASE_MIB, 0) * MIB / BYTES_AN_ENTRY[operator.part]) ** 0.5)
+    return int((max(available_mib - BASE_MIB, 0) * MIB / BYTES_AN_ENTRY) ** 0.5)
 
 
 def memory_of_this_machine_mib() -> float:

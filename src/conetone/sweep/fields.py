@@ -4,9 +4,11 @@ The one source of workflow/schemas/sweep.schema.json and of config/README.md. A 
 or a list is a list here; `one_or_many` makes a list of one value.
 """
 
+from collections.abc import Iterable
 from typing import Annotated, Any, Literal, get_args
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, StringConstraints, create_model
+from pydantic.fields import FieldInfo
 
 from conetone.fit.models import MODELS
 from conetone.fit.windows import GROWTH_PATTERN
@@ -18,6 +20,9 @@ LONGEST_NAME = 60
 LARGEST_SEED = 2**63 - 1
 LARGEST_SIZE = 10_000_000
 MOST_REPLICATES = 10_000_000
+# Every lower end of a window is fitted with every upper end, and every exponent with every ω.
+MOST_ALTERNATIVES = 20
+ALLOWED_KEY = "x-allowed"
 
 
 class Fields(BaseModel):
@@ -28,23 +33,37 @@ class Fields(BaseModel):
 
 def described(meaning: str, allowed: str, **constraints: Any) -> Any:
     """A field with its meaning and, for error messages and the documentation, what is allowed in words."""
-    return Field(description=meaning, json_schema_extra={"x-allowed": allowed}, **constraints)
+    return Field(description=meaning, json_schema_extra={ALLOWED_KEY: allowed}, **constraints)
 
 
-def one_or_many(item: Any) -> BeforeValidator:
-    """Take a single value for a list of one; both forms stand in the JSON Schema."""
+def allowed_in_words(field: FieldInfo) -> str:
+    """What a field made by `described` allows, for people."""
+    extra = field.json_schema_extra
+    return str(extra[ALLOWED_KEY]) if isinstance(extra, dict) else ""
+
+
+def by_file_name(fields: type[Fields]) -> dict[str, FieldInfo]:
+    """The fields of a mapping under the names they have in the file."""
+    return {field.alias or name: field for name, field in fields.model_fields.items()}
+
+
+def one_or_many(item: Any, most: int | None = None) -> BeforeValidator:
+    """Take a single value for a list of one; both forms stand in the JSON Schema.
+
+    The lengths a list may have are for the schema alone; give them to `described` too.
+    """
+    many = Annotated[list[item], Field(min_length=1, max_length=most)]
     return BeforeValidator(
-        lambda value: value if isinstance(value, list) else [value], json_schema_input_type=item | list[item]
+        lambda value: value if isinstance(value, list) else [value], json_schema_input_type=item | many
     )
 
 
-def names(options: Any) -> str:
+def names(options: Iterable[object], word: str = "or") -> str:
     """`a, b or c`."""
     *head, last = [str(option) for option in options]
-    return f"{', '.join(head)} or {last}" if head else last
+    return f"{', '.join(head)} {word} {last}" if head else last
 
 
-Dimension = Annotated[int, Field(ge=2)]
 Size = Annotated[int, Field(ge=2, le=LARGEST_SIZE)]
 Replicates = Annotated[int, Field(ge=1, le=MOST_REPLICATES)]
 GrowthText = Annotated[str, StringConstraints(pattern=GROWTH_PATTERN)]
@@ -73,7 +92,7 @@ def _ensemble_fields(ensemble: Ensemble) -> type[Fields]:
 
 def _parameter_field(parameter: Parameter) -> tuple[Any, Any]:
     item = Annotated[int, Field(ge=parameter.minimum, le=parameter.maximum)]
-    kind = Annotated[list[item], one_or_many(item)]  # type: ignore[valid-type]
+    kind = Annotated[list[item], one_or_many(item)]
     allowed = (
         f"a whole number from {parameter.minimum} to {parameter.maximum}, or a list of them: one series each"
     )
@@ -90,11 +109,13 @@ class OperatorFields(Fields):
     """One matrix of the order, and the self-adjoint parts whose spectra are taken."""
 
     matrix: MatrixName = described(
-        "; ".join(f"`{operator.name}`: {operator.meaning}" for operator in OPERATORS.values()),
+        "; ".join(f"`{operator.name}` ({operator.meaning})" for operator in OPERATORS.values()),
         names(OPERATORS),
     )
     part: Annotated[list[PartName], one_or_many(PartName)] = described(
-        "`symmetric`: M + Mᵀ; `antisymmetric`: i(M − Mᵀ)", f"{names(PARTS)}, or a list of them", min_length=1
+        "of a matrix M, `symmetric`: M + Mᵀ; `antisymmetric`: i(M − Mᵀ)",
+        f"{names(PARTS)}, or a list of them",
+        min_length=1,
     )
 
 
@@ -102,6 +123,11 @@ class SpectrumFields(Fields):
     """Which eigenvalues are computed."""
 
     extent: Literal["full"] = described("`full`: every eigenvalue", "full", default="full")
+
+
+def _growth_allowed(example: str) -> str:
+    growth = f"`c * n^b` with c > 0 and 0 < b ≤ 1, such as {example}"
+    return f"{growth}, or a list of up to {MOST_ALTERNATIVES} of them"
 
 
 class WindowFields(Fields):
@@ -112,13 +138,13 @@ class WindowFields(Fields):
 
     model_config = ConfigDict(validate_by_name=False, validate_by_alias=True)
 
-    from_: Annotated[list[GrowthText], one_or_many(GrowthText)] = described(
-        "lower ends", "`c * n^b` with c > 0 and 0 < b ≤ 1, such as 0.25 * n^0.5, or a list of them",
-        min_length=1, alias="from", default=["0.25 * n^0.5", "0.4 * n^0.5"],
+    from_: Annotated[list[GrowthText], one_or_many(GrowthText, MOST_ALTERNATIVES)] = described(
+        "lower ends", _growth_allowed("0.25 * n^0.5"),
+        min_length=1, max_length=MOST_ALTERNATIVES, alias="from", default=["0.25 * n^0.5", "0.4 * n^0.5"],
     )  # fmt: skip
-    to: Annotated[list[GrowthText], one_or_many(GrowthText)] = described(
-        "upper ends, exclusive", "`c * n^b` with c > 0 and 0 < b ≤ 1, such as 0.25 * n^0.75, or a list of them",
-        min_length=1, default=["0.25 * n^0.75", "0.35 * n^0.75"],
+    to: Annotated[list[GrowthText], one_or_many(GrowthText, MOST_ALTERNATIVES)] = described(
+        "upper ends, exclusive", _growth_allowed("0.25 * n^0.75"),
+        min_length=1, max_length=MOST_ALTERNATIVES, default=["0.25 * n^0.75", "0.35 * n^0.75"],
     )  # fmt: skip
     smallest_rank: int = described(
         "no window begins below this rank", "a whole number from 1 to 1000", ge=1, le=1000, default=2
@@ -139,9 +165,10 @@ class WindowFields(Fields):
 class ExtrapolationFields(Fields):
     """α(n) = α∞ + a n^−ω, averaged over ω and over the number of smallest sizes left out."""
 
-    omegas: Annotated[list[Omega], one_or_many(Omega)] = described(
-        "the set of ω averaged over", "a number above 0 and up to 4, or a list of them",
-        min_length=1, default=[0.5, 0.75, 1.0],
+    omegas: Annotated[list[Omega], one_or_many(Omega, MOST_ALTERNATIVES)] = described(
+        "the set of ω averaged over",
+        f"a number above 0 and up to 4, or a list of up to {MOST_ALTERNATIVES} of them",
+        min_length=1, max_length=MOST_ALTERNATIVES, default=[0.5, 0.75, 1.0],
     )  # fmt: skip
     most_sizes_cut: int = described(
         "leave out none, one, … up to this many of the smallest sizes (three always stay)",
@@ -185,3 +212,12 @@ class SweepFields(Fields):
     extrapolation: ExtrapolationFields = described(
         "finite-size scaling", "a mapping", default=ExtrapolationFields()
     )
+
+
+# The model of every mapping inside a sweep but the ensembles, which have one model each.
+INNER_FIELDS: dict[str, type[Fields]] = {
+    "operators": OperatorFields,
+    "spectrum": SpectrumFields,
+    "windows": WindowFields,
+    "extrapolation": ExtrapolationFields,
+}

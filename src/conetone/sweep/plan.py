@@ -123,7 +123,7 @@ class Plan:
                 (spectra_path(block, operator),),
                 cost.START_SECONDS
                 + len(block.replicates) * cost.diagonalise_seconds(block.point.size, operator),
-                cost.diagonalise_mib(block.point.size, operator),
+                cost.diagonalise_mib(block.point.size),
             )
             for block in self.blocks
             for operator in self.sweep.operators

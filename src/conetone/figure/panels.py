@@ -1,0 +1,175 @@
+"""A page of panels, one for each series, with one legend and small print; nothing overlaps.
+
+A figure grows with its legend, its notes and the lines of its titles, so that the panels keep their size.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from matplotlib.artist import Artist
+from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+from matplotlib.layout_engine import ConstrainedLayoutEngine
+from matplotlib.legend import Legend
+from matplotlib.ticker import NullFormatter, StrMethodFormatter
+
+from conetone.figure.labels import wrapped
+from conetone.figure.style import COLUMN_INCHES, FONT_POINTS, PAGE_INCHES, SMALL_POINTS
+
+PLAIN_NUMBERS = StrMethodFormatter("{x:g}")
+# What tick labels and the axis label take from the width or the height of a panel.
+_MARGIN_INCHES = 0.5
+_LINE_INCHES = 1.25 * FONT_POINTS / 72
+_MOST_TITLE_LINES = 6
+_MOST_NOTE_LINES = 12
+
+
+@dataclass(frozen=True)
+class Panel:
+    """The axes of one series, from top to bottom; `outer_left` and `outer_bottom` tell where labels go."""
+
+    axes: tuple[Axes, ...]
+    outer_left: bool
+    outer_bottom: bool
+
+
+@dataclass(frozen=True)
+class Page:
+    """A figure with its panels, each so wide; `free_cell` is the first cell of the grid without a panel."""
+
+    figure: Figure
+    panels: tuple[Panel, ...]
+    panel_inches: float
+    free_cell: Any
+
+
+def new_figure(width: float, height: float, gap: float = 0.06) -> Figure:
+    """An empty figure of this size in inches, laid out so that nothing overlaps; `gap` parts its columns."""
+    layout = ConstrainedLayoutEngine(w_pad=gap / 2, h_pad=0.03, wspace=0.0, hspace=0.0)
+    figure = Figure(figsize=(width, height), layout=layout)
+    FigureCanvasAgg(figure)
+    return figure
+
+
+def columns_of(count: int) -> int:
+    """Columns that keep so many panels readable at the width of a page."""
+    for most, columns in ((3, max(count, 1)), (4, 2), (6, 3), (8, 4), (9, 3)):
+        if count <= most:
+            return columns
+    return 4
+
+
+def new_page(
+    titles: Sequence[str], heights: Sequence[float], *, common_axes: bool = True, gap: float = 0.06
+) -> Page:
+    """A page of one panel for each title, a stack of axes with these heights in inches and one x axis.
+
+    `gap` inches part the columns. With `common_axes` all panels have the same axes, and tick labels stand
+    only at the left and below.
+    """
+    count, stack = len(titles), len(heights)
+    columns = columns_of(count)
+    rows = -(-max(count, 1) // columns)
+    width = COLUMN_INCHES if columns == 1 else PAGE_INCHES
+    inches = width / columns - (gap + 0.1 if common_axes else gap + _MARGIN_INCHES)
+    wrapped_titles = [wrapped(title, inches, FONT_POINTS, _MOST_TITLE_LINES) for title in titles]
+    title_lines = [
+        max((title.count("\n") + 1 for title in wrapped_titles[row * columns :][:columns]), default=1)
+        for row in range(rows)
+    ]
+    margins = _MARGIN_INCHES if common_axes else rows * _MARGIN_INCHES
+    height = rows * (sum(heights) + 0.1 * stack) + sum(title_lines) * _LINE_INCHES + margins
+    figure = new_figure(width, height, gap)
+    grid = figure.add_gridspec(rows * stack, columns, height_ratios=list(heights) * rows)
+    panels: list[Panel] = []
+    for position, title in enumerate(wrapped_titles):
+        row, column = divmod(position, columns)
+        outer_bottom = position + columns >= count
+        made: list[Axes] = []
+        for level in range(stack):
+            first = panels[0].axes[level] if panels and common_axes else None
+            cell = grid[row * stack + level, column]
+            axes = figure.add_subplot(cell, sharex=first or (made[0] if made else None), sharey=first)
+            lowest = level == stack - 1 and (outer_bottom or not common_axes)
+            axes.tick_params(labelbottom=lowest, labelleft=column == 0 or not common_axes)
+            made.append(axes)
+        made[0].set_title(title)
+        panels.append(Panel(tuple(made), column == 0, outer_bottom))
+    if not panels:
+        empty = figure.add_subplot(grid[:, 0])
+        no_ticks(empty)
+        empty.text(0.5, 0.5, "no series", ha="center", va="center", transform=empty.transAxes)
+    free = count % columns
+    free_cell = grid[(rows - 1) * stack :, free] if free else None
+    return Page(figure, tuple(panels), inches, free_cell)
+
+
+def log_x(axes: Axes) -> None:
+    """A logarithmic x axis whose ticks read 1, 10, 100."""
+    axes.set_xscale("log")
+    axes.xaxis.set_major_formatter(PLAIN_NUMBERS)
+    axes.xaxis.set_minor_formatter(NullFormatter())
+
+
+def no_ticks(*all_axes: Axes) -> None:
+    """Nothing along the axes of panels that have nothing to draw."""
+    for axes in all_axes:
+        axes.set(xticks=[], yticks=[])
+
+
+def say(page: Page, panel: Panel, text: str) -> None:
+    """Words in the middle of a panel that has nothing to draw."""
+    words = wrapped(text, page.panel_inches * 0.9, SMALL_POINTS, lines=6)
+    axes = panel.axes[0]
+    axes.text(0.5, 0.5, words, ha="center", va="center", transform=axes.transAxes, fontsize=SMALL_POINTS)
+
+
+def add_legend(page: Page, handles: Sequence[Artist]) -> Legend:
+    """One legend: in the free cell if it fits there, else above the panels in as many columns as fit."""
+    if page.free_cell is not None:
+        blank = page.figure.add_subplot(page.free_cell)
+        blank.set_axis_off()
+        legend = blank.legend(handles=list(handles), loc="center")
+        # before the layout a cell is as large as the grid alone makes it, which is close enough
+        if _fits(legend, blank.bbox.width * 1.1, blank.bbox.height * 1.1):
+            return legend
+        blank.remove()
+    return legend_above(page.figure, handles)
+
+
+def legend_above(figure: Figure, handles: Sequence[Artist]) -> Legend:
+    """A legend above everything, in as many columns as fit; the figure grows by it."""
+    for columns in range(len(handles), 0, -1):
+        legend = _legend_of_columns(figure, handles, columns)
+        if columns == 1 or _fits(legend, figure.bbox.width * 0.97, figure.bbox.height):
+            break
+        legend.remove()
+    _grow(figure, legend.get_window_extent().height / figure.dpi)
+    return legend
+
+
+def _legend_of_columns(figure: Figure, handles: Sequence[Artist], columns: int) -> Legend:
+    # matplotlib fills a legend column by column; reading goes along rows
+    ordered = [handle for column in range(columns) for handle in handles[column::columns]]
+    return figure.legend(handles=ordered, loc="outside upper center", ncols=columns)
+
+
+def _fits(legend: Legend, width: float, height: float) -> bool:
+    box = legend.get_window_extent()
+    return box.width <= width and box.height <= height
+
+
+def add_note(figure: Figure, *sentences: str) -> None:
+    """Small print below the figure, one paragraph; empty sentences say nothing. The figure grows by it."""
+    text = " ".join(sentence for sentence in sentences if sentence)
+    if text:
+        words = wrapped(text, figure.get_figwidth() - 0.2, SMALL_POINTS, _MOST_NOTE_LINES)
+        figure.supxlabel(words, fontsize=SMALL_POINTS, x=0.02, ha="left")
+        _grow(figure, (words.count("\n") + 1) * _LINE_INCHES)
+
+
+def _grow(figure: Figure, inches: float) -> None:
+    width, height = figure.get_size_inches()
+    figure.set_size_inches(width, height + inches)

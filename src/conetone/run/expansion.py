@@ -1,0 +1,92 @@
+"""`conetone expand`: what a sweep expands into, before anything runs."""
+
+import json
+from pathlib import Path
+
+from rich import box
+from rich.console import Console
+from rich.table import Table
+
+from conetone.run.outcome import PLAIN_WIDTH
+from conetone.run.progress import duration
+from conetone.sweep.blocks import blocks_of
+from conetone.sweep.definition import load_sweep
+from conetone.sweep.plan import STAGES, Plan
+
+
+def print_expansion(sweep_file: Path, results: Path, *, as_json: bool) -> None:
+    """Print points, series and jobs with their forecasts; raises SweepError for a faulty file."""
+    plan = Plan(load_sweep(sweep_file))
+    folder = results.absolute() / plan.sweep.name
+    if as_json:
+        _print_json(plan, folder)
+    else:
+        _print_text(plan, folder)
+
+
+def _missing(plan: Plan, folder: Path, stage: str) -> int:
+    return sum(any(not (folder / o).exists() for o in job.outputs) for job in plan.jobs[stage].values())
+
+
+def _print_json(plan: Plan, folder: Path) -> None:
+    value = {
+        "sweep": plan.sweep.name,
+        "folder": str(folder),
+        "points": [
+            {
+                "point": point.name,
+                **point.as_json(),
+                "replicates": replicates,
+                "blocks": len(list(blocks_of(point, replicates))),
+            }
+            for point, replicates in plan.points
+        ],
+        "series": [{"series": series.name, **series.as_json()} for series in plan.series],
+        "jobs": {
+            stage: {
+                "count": len(plan.jobs[stage]),
+                "missing": _missing(plan, folder, stage),
+                "core_seconds": round(sum(job.seconds for job in plan.jobs[stage].values()), 1),
+                "peak_mib": round(max(job.mib for job in plan.jobs[stage].values())),
+            }
+            for stage in STAGES
+        },
+    }
+    print(json.dumps(value, indent=2))
+
+
+def _print_text(plan: Plan, folder: Path) -> None:
+    console = Console(highlight=False, markup=False)
+    if not console.is_terminal:
+        console = Console(highlight=False, markup=False, width=PLAIN_WIDTH, no_color=True)
+    sizes = ", ".join(str(size) for size in plan.sweep.sizes)
+    console.print(
+        f"Sweep {plan.sweep.name}: {len(plan.points)} points, {len(plan.series)} series, sizes {sizes}."
+    )
+    points = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="Points", title_justify="left")
+    for header in ("ensemble", "size", "replicates", "blocks"):
+        points.add_column(header, justify="left" if header == "ensemble" else "right")
+    for point, replicates in plan.points:
+        blocks = len(list(blocks_of(point, replicates)))
+        points.add_row(point.choice.label, str(point.size), str(replicates), str(blocks))
+    console.print(points)
+    series = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="Series", title_justify="left")
+    for header in ("ensemble", "matrix", "part"):
+        series.add_column(header)
+    for each in plan.series:
+        series.add_row(each.choice.label, each.operator.matrix, each.operator.part)
+    console.print(series)
+    jobs = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="Jobs", title_justify="left")
+    for header in ("stage", "jobs", "not there yet", "core time", "memory of one"):
+        jobs.add_column(header, justify="left" if header == "stage" else "right")
+    for stage in STAGES:
+        of_stage = plan.jobs[stage].values()
+        jobs.add_row(
+            stage,
+            str(len(of_stage)),
+            str(_missing(plan, folder, stage)),
+            duration(sum(job.seconds for job in of_stage)),
+            f"{max(job.mib for job in of_stage):.0f} MiB",
+        )
+    console.print(jobs)
+    console.print(f"Results: {folder}", soft_wrap=True)

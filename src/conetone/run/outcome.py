@@ -1,0 +1,140 @@
+"""What a sweep came to: the closing table, for people and as JSON."""
+
+import json
+import math
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from rich import box
+from rich.console import Console
+from rich.table import Table
+
+from conetone.records.files import read_rows
+from conetone.run.progress import duration
+from conetone.sweep.paths import CLOSING_TABLES, closing_path, figure_paths
+from conetone.sweep.plan import Plan
+from conetone.sweep.points import EnsembleChoice
+
+# Columns of plain text, where the output is no terminal.
+PLAIN_WIDTH = 150
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """The exponents of a sweep and where everything stands; `folder` is absolute."""
+
+    sweep: str
+    folder: Path
+    exponents: list[dict[str, Any]]
+    figures: list[Path]
+    jobs: int
+    jobs_run: int
+    seconds: float
+
+    @classmethod
+    def read(cls, folder: Path, plan: Plan, jobs_run: int, seconds: float) -> "Outcome":
+        """Read the finished tables of a sweep."""
+        exponents = folder / closing_path("exponents")
+        rows = read_rows(exponents) if exponents.exists() else []  # options such as --until stop before it
+        drawn = [path for path in figure_paths(plan.sweep.operators) if path.suffix == ".png"]
+        figures = [path for path in drawn if (folder / path).exists()]
+        return cls(plan.sweep.name, folder, rows, figures, len(plan.all_jobs), jobs_run, seconds)
+
+    @property
+    def replicates_lost(self) -> int:
+        """Spectra that were asked for and cannot be used."""
+        return sum(row["replicates_attempted"] - row["replicates_used"] for row in self.exponents)
+
+
+def print_table(outcome: Outcome) -> None:
+    """Print the closing table, its notes, and the paths, to standard output."""
+    console = Console(highlight=False, markup=False)
+    if not console.is_terminal:
+        console = Console(highlight=False, markup=False, width=PLAIN_WIDTH, no_color=True)
+    if outcome.jobs_run:
+        console.print(f"{outcome.jobs_run} jobs run in {duration(outcome.seconds)}, {outcome.jobs} in all.")
+    else:
+        console.print(f"Nothing to do: all {outcome.jobs} jobs are up to date ({outcome.seconds:.1f} s).")
+    if not outcome.exponents:
+        console.print("No exponents yet: the options given stopped before stage aggregate.")
+        return
+    notes: dict[str, int] = {}
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
+    for header in ("series", "exponent(stat)(sys)", "expected", "sizes", "used/attempted", "notes"):
+        table.add_column(
+            header, no_wrap=header != "series", justify="right" if header == "used/attempted" else "left"
+        )
+    for row in outcome.exponents:
+        marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
+        table.add_row(
+            series_label(row),
+            format_value(row["exponent"], row["statistical"], row["systematic"]),
+            _expected(row),
+            _sizes(row["sizes"]),
+            f"{row['replicates_used']}/{row['replicates_attempted']}",
+            " ".join(f"[{mark}]" for mark in marks),
+        )
+    console.print(table)
+    for note, mark in notes.items():
+        console.print(f"[{mark}] {note}")
+    console.print(f"\nTables:  {outcome.folder}/{{{','.join(CLOSING_TABLES)}}}.parquet", soft_wrap=True)
+    console.print(f"Figures: {outcome.folder / 'figures'}", soft_wrap=True)
+    for path in outcome.figures:
+        console.print(f"         {path.stem} (.pdf .png .csv)", soft_wrap=True)
+
+
+def print_json(outcome: Outcome) -> None:
+    """Print the outcome as one JSON object; copies stay in exponents.parquet."""
+    bulky = ("copies", "copies_size", "copies_replicate")
+    rows = [{k: v for k, v in row.items() if k not in bulky} for row in outcome.exponents]
+    print(
+        json.dumps(
+            {
+                "sweep": outcome.sweep,
+                "folder": str(outcome.folder),
+                "jobs": outcome.jobs,
+                "jobs_run": outcome.jobs_run,
+                "seconds": round(outcome.seconds, 3),
+                "exponents": rows,
+                "figures": [str(outcome.folder / path) for path in outcome.figures],
+            },
+            indent=2,
+        )
+    )
+
+
+def series_label(row: dict[str, Any]) -> str:
+    """`minkowski-diamond, dimension 3: causal antisymmetric`."""
+    given = {"dimension": row["dimension"]} if row["dimension"] is not None else {}
+    choice = EnsembleChoice(row["ensemble"], tuple(given.items()), row["count"])
+    return f"{choice.label}: {row['matrix']} {row['part']}"
+
+
+def format_value(value: float | None, statistical: float | None, systematic: float | None) -> str:
+    """`0.6910(30)(570)`: the larger error to two digits, both in units of the last digit."""
+    if value is None or statistical is None or systematic is None:
+        return "none"
+    larger = max(statistical, systematic)
+    if not (larger > 0 and math.isfinite(larger)):
+        return f"{value:.6f}"
+    decimals = max(0, 1 - int(f"{larger:.1e}".partition("e")[2]))
+    unit = 10**decimals
+    return f"{value:.{decimals}f}({round(statistical * unit)})({round(systematic * unit)})"
+
+
+def _expected(row: dict[str, Any]) -> str:
+    if row["expected"] is None:
+        return ""
+    deviation = f", {row['deviation']:+.1f} σ" if row["deviation"] is not None else ""
+    return f"{row['expected']:.4g} {row['expected_standing']}{deviation}"
+
+
+def _sizes(sizes: list[int]) -> str:
+    return (
+        f"{sizes[0]} … {sizes[-1]} ({len(sizes)})" if len(sizes) > 1 else ", ".join(map(str, sizes)) or "none"
+    )
+
+
+def _notes(row: dict[str, Any]) -> list[str]:
+    return ([row["reason"]] if row["reason"] else []) + list(row["warnings"])

@@ -1,0 +1,63 @@
+"""The processes that work for a sweep: found by a mark in their environment, stopped gently, then firmly."""
+
+import os
+from collections.abc import Callable
+from contextlib import suppress
+from pathlib import Path
+
+import psutil
+
+from conetone.run.workflow import FOLDER_MARK, RUN_MARK
+
+# A job saves its finished rows when it is asked to stop; a library call in progress may delay that.
+GRACE_SECONDS = 10.0
+
+
+def processes_of(folder: Path) -> list[psutil.Process]:
+    """Jobs and Snakemake processes that work in a sweep's folder, this process aside."""
+    found = []
+    for process in psutil.process_iter():
+        try:
+            marked = process.environ().get(FOLDER_MARK) == str(folder)
+        except (psutil.Error, OSError):  # another user's, or gone
+            continue
+        if marked and process.pid != os.getpid():
+            found.append(process)
+    return found
+
+
+def snakemake_started_by_hand(folder: Path) -> psutil.Process | None:
+    """A live Snakemake in this folder that no `conetone run` started."""
+    for process in psutil.process_iter():
+        try:
+            here = any("snakemake" in part for part in process.cmdline()[:4]) and process.cwd() == str(folder)
+            if here and RUN_MARK not in process.environ() and FOLDER_MARK not in process.environ():
+                return process
+        except (psutil.Error, OSError):
+            continue
+    return None
+
+
+def stop(processes: list[psutil.Process]) -> None:
+    """Stop these processes: terminate, wait a little, kill.
+
+    Snakemake hears it first, so that it starts no new job in place of those that end.
+    """
+    for process in sorted(processes, key=lambda process: not _is_snakemake(process)):
+        _quietly(process.terminate)
+    _, stubborn = psutil.wait_procs(processes, timeout=GRACE_SECONDS)
+    for process in stubborn:
+        _quietly(process.kill)
+    psutil.wait_procs(stubborn, timeout=GRACE_SECONDS)
+
+
+def _is_snakemake(process: psutil.Process) -> bool:
+    try:
+        return "snakemake" in process.cmdline()
+    except psutil.Error:
+        return False
+
+
+def _quietly(send: Callable[[], None]) -> None:
+    with suppress(psutil.NoSuchProcess):
+        send()

@@ -1,0 +1,48 @@
+"""Stage figure: draw the closing tables, and write the numbers beside each figure."""
+
+from pathlib import Path
+
+from conetone.figure.closing import ClosingTables
+from conetone.figure.dimension import draw_exponents, exponent_numbers
+from conetone.figure.extrapolation import draw_extrapolation, extrapolation_numbers
+from conetone.figure.files import write_figure
+from conetone.figure.slope import draw_slope, slope_numbers
+from conetone.figure.spectra import draw_spectra, spectra_numbers
+from conetone.figure.style import theme
+from conetone.records.files import read_rows
+from conetone.records.tables import COUNT, REAL, SERIES_KEYS, TABLES, TEXT
+from conetone.stages.block import log
+from conetone.sweep.paths import CLOSING_TABLES, closing_path
+from conetone.sweep.requests import FigureRequest
+
+FOLDER = Path("figures")
+KINDS = {
+    "spectra": (spectra_numbers, draw_spectra),
+    "extrapolation": (extrapolation_numbers, draw_extrapolation),
+    "local-slope": (slope_numbers, draw_slope),
+}
+
+
+def draw_figures(request: FigureRequest) -> None:
+    """Write every figure of the operators as PDF, PNG and CSV; raises TableError for a damaged table."""
+    tables = read_closing_tables()
+    with theme():
+        numbers = exponent_numbers(tables, request.operators)
+        write_figure(FOLDER / "exponents", draw_exponents(numbers, tables, request.operators), numbers)
+        for operator in request.operators:
+            for kind, (numbers_of, draw) in KINDS.items():
+                name = f"{kind}-{operator.name}"
+                numbers = numbers_of(tables, operator)
+                write_figure(FOLDER / name, draw(numbers, tables, operator), numbers)
+                log(f"drew {name}")
+
+
+def read_closing_tables() -> ClosingTables:
+    """The closing tables, without the list columns, which no figure draws."""
+    rows = {
+        name: read_rows(
+            closing_path(name), [c.name for c in TABLES[name].columns if c.type in (TEXT, COUNT, REAL)]
+        )
+        for name in CLOSING_TABLES
+    }
+    return ClosingTables([column.name for column in SERIES_KEYS], **rows)

@@ -1,0 +1,70 @@
+"""Series without a result: not drawn, but named, each with its reason; figures exist all the same."""
+
+from pathlib import Path
+
+from conetone.stages.figure import FOLDER
+from conetone.sweep.paths import figure_paths
+
+from .drawing import Drawn, artists, draw, texts
+from .tables import ANTISYMMETRIC, LINK, make_tables
+
+REASON = "2 usable sizes; extrapolation takes 3"
+
+
+def written(drawn: Drawn, name: str) -> str:
+    """Everything written on a figure, with plain spaces."""
+    found = " ".join(text.get_text() for text in texts(drawn.figures[name]))
+    return found.replace("\n", " ").replace("\N{NO-BREAK SPACE}", " ")
+
+
+def test_exponents_without_a_value_are_named(crowd: Drawn) -> None:
+    csv = crowd.csv("exponents")
+    assert not (csv.loc[csv.layer == "exponent", "dimension"] == 3).any()
+    note = written(crowd, "exponents")
+    assert "Not drawn, because without a value: Minkowski diamond, $d$ = 3 (causal, antisymmetric);" in note
+    assert "Minkowski box, $d$ = 3 (causal, antisymmetric)" in note
+    assert "Minkowski diamond, $d$ = 2 (" not in note
+
+
+def test_sizes_are_drawn_without_an_extrapolation(crowd: Drawn) -> None:
+    csv = crowd.csv("extrapolation-causal-antisymmetric")
+    diamond = csv[(csv.ensemble == "minkowski-diamond") & (csv.dimension == 3)]
+    assert set(diamond.layer) == {"size", "expected"}
+    assert (diamond.layer == "size").sum() == 5
+    note = written(crowd, "extrapolation-causal-antisymmetric")
+    assert f"Minkowski diamond, $d$ = 3 is not extrapolated: {REASON}." in note
+
+
+def test_an_empty_panel_says_why(crowd: Drawn, nothing: Drawn) -> None:
+    for kind in ("spectra", "extrapolation", "local-slope"):
+        name = f"{kind}-causal-antisymmetric"
+        assert written(crowd, name).count(f" {REASON}") >= 1
+        assert written(nothing, name).count(REASON) == 3
+
+
+def test_all_failed_leaves_nothing_but_words(nothing: Drawn) -> None:
+    for name, figure in nothing.figures.items():
+        assert not [gid for gid in artists(figure) if not gid.startswith("expected:")], name
+    assert "no exponent at infinite size" in written(nothing, "exponents")
+
+
+def test_one_size_has_a_spectrum_and_no_exponent(single: Drawn) -> None:
+    assert set(single.csv("spectra-causal-antisymmetric").layer) == {"spectrum", "fit", "residual", "window"}
+    assert single.csv("exponents").empty
+
+
+def test_an_operator_without_series(tmp_path: Path) -> None:
+    drawn = draw(tmp_path, make_tables([]), (ANTISYMMETRIC, LINK))
+    for path in figure_paths(drawn.operators):
+        assert (tmp_path / path).stat().st_size > 0
+    for path in (tmp_path / FOLDER).glob("*.csv"):
+        assert len(path.read_text().splitlines()) == 1
+    assert "no series" in written(drawn, "spectra-link-symmetric")
+
+
+def test_what_nothing_is_expected_of(tmp_path: Path) -> None:
+    """A matrix without any expected exponent, an ensemble without dimension: no line, no curve, no strip."""
+    drawn = draw(tmp_path, make_tables([("kleitman-rothschild", None)], (LINK,)), (LINK,))
+    assert set(drawn.csv("exponents").layer) == {"exponent"}
+    assert [axes.get_xlabel() for axes in drawn.figures["exponents"].axes] == ["no dimension"]
+    assert "expected" not in set(drawn.csv("extrapolation-link-symmetric").layer)

@@ -1,0 +1,119 @@
+"""The numbers beside each figure are those of the tables, recomputed here plainly from the Parquet files."""
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from .drawing import Drawn
+from .tables import ANTISYMMETRIC, OMEGA, SYMMETRIC
+
+OPERATORS = [ANTISYMMETRIC, SYMMETRIC]
+
+
+def of_operator(table: pd.DataFrame, operator) -> pd.DataFrame:
+    return table[(table.matrix == operator.matrix) & (table.part == operator.part)].reset_index(drop=True)
+
+
+def layer(numbers: pd.DataFrame, name: str) -> pd.DataFrame:
+    return numbers[numbers.layer == name].reset_index(drop=True)
+
+
+def same(found: pd.Series, expected: pd.Series | np.ndarray) -> None:
+    np.testing.assert_allclose(found.to_numpy(), np.asarray(expected), rtol=1e-12, strict=False)
+
+
+@pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
+def test_spectra(study: Drawn, operator) -> None:
+    numbers = study.csv(f"spectra-{operator.name}")
+    profiles, spectrum = of_operator(study.table("profiles"), operator), layer(numbers, "spectrum")
+    assert spectrum[["series", "size"]].equals(profiles[["series", "size"]].astype({"series": object}))
+    same(spectrum["rank"], profiles["rank"])
+    same(spectrum["magnitude"], np.exp(profiles["log_magnitude"]))
+    same(spectrum["magnitude_low"], np.exp(profiles["log_magnitude"] - profiles["log_magnitude_error"]))
+    same(spectrum["magnitude_high"], np.exp(profiles["log_magnitude"] + profiles["log_magnitude_error"]))
+    fitted = of_operator(study.table("bins"), operator).dropna(subset="fitted")
+    same(layer(numbers, "fit")["rank"], fitted["rank"])
+    same(layer(numbers, "fit")["magnitude"], np.exp(fitted["fitted"]))
+    same(layer(numbers, "residual")["residual"], fitted["residual"])
+    window = layer(numbers, "window")
+    largest = fitted[fitted["size"] == 1024].groupby("series", sort=False)
+    assert window["size"].tolist() == [1024] * 5
+    same(window["rank"], largest["first_rank"].min())
+    same(window["last_rank"], largest["last_rank"].max())
+
+
+@pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
+def test_local_slope(study: Drawn, operator) -> None:
+    numbers = study.csv(f"local-slope-{operator.name}")
+    profiles = of_operator(study.table("profiles"), operator).dropna(subset="slope")
+    slope = layer(numbers, "slope")
+    same(slope["rank"], profiles["slope_rank"])
+    same(slope["slope"], profiles["slope"])
+    same(slope["slope_high"] - slope["slope"], profiles["slope_error"])
+    same(slope["slope"] - slope["slope_low"], profiles["slope_error"])
+    same_expected(numbers, "slope", of_operator(study.table("exponents"), operator))
+
+
+def same_expected(numbers: pd.DataFrame, column: str, exponents: pd.DataFrame) -> None:
+    known = exponents.dropna(subset="expected")
+    expected = layer(numbers, "expected")
+    assert expected["series"].tolist() == known["series"].tolist()
+    assert expected["standing"].tolist() == known["expected_standing"].tolist()
+    same(expected[column], known["expected"])
+
+
+def same_errors(found: pd.DataFrame, value: pd.Series, statistical: pd.Series, systematic: pd.Series) -> None:
+    total = np.sqrt(statistical**2 + systematic**2)
+    same(found["exponent"], value)
+    same(found["statistical_low"], value - statistical)
+    same(found["statistical_high"], value + statistical)
+    same(found["total_low"], value - total)
+    same(found["total_high"], value + total)
+
+
+@pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
+def test_extrapolation(study: Drawn, operator) -> None:
+    numbers = study.csv(f"extrapolation-{operator.name}")
+    fits = of_operator(study.table("fits"), operator)
+    averages, sizes = fits[fits.window == "average"], layer(numbers, "size")
+    same_errors(sizes, averages["exponent"], averages["statistical"], averages["misfit"])
+    same(sizes["abscissa"], averages["size"].to_numpy(dtype=float) ** -OMEGA)
+    curve, table = layer(numbers, "curve"), of_operator(study.table("extrapolations"), operator)
+    same_errors(curve, table["exponent"], table["statistical"], table["systematic"])
+    same(curve["abscissa"], table["size"] ** -OMEGA)
+    limit, exponents = layer(numbers, "limit"), of_operator(study.table("exponents"), operator)
+    same_errors(limit, exponents["exponent"], exponents["statistical"], exponents["systematic"])
+    assert (limit["abscissa"] == 0).all()
+    assert np.isposinf(limit["size"]).all()
+    same_expected(numbers, "exponent", exponents)
+
+
+def test_exponents(study: Drawn) -> None:
+    numbers, table = study.csv("exponents"), study.table("exponents")
+    drawn = layer(numbers, "exponent").set_index("series")
+    table = table.set_index("series").loc[drawn.index]
+    assert len(drawn) == len(study.rows["exponents"])
+    same_errors(drawn, table["exponent"], table["statistical"], table["systematic"])
+    flat = table["dimension"].notna()
+    assert (drawn["axis"] == np.where(flat, "dimension", "other")).all()
+    assert (drawn["position"] - table["dimension"])[flat].abs().max() < 0.5
+    # what shares a dimension stands apart
+    assert drawn.groupby("axis")["position"].is_unique.all()
+    curve = layer(numbers, "curve")
+    # d / (2 (d − 1)), fractional integration along null rays
+    same(curve["exponent"], curve["position"] / (2 * (curve["position"] - 1)))
+    assert (curve["position"].min(), curve["position"].max()) == (2, 4)
+    exact = layer(numbers, "expected")
+    assert exact[["dimension", "part", "exponent", "standing"]].to_numpy().tolist() == [
+        [2, "antisymmetric", 1, "exact"],
+        # the box is made up as exact too
+        [2, "antisymmetric", 1, "exact"],
+    ]
+
+
+def test_whole_numbers_stay_whole_and_nulls_blank(study: Drawn) -> None:
+    lines = (study.folder / "figures" / "spectra-causal-antisymmetric.csv").read_text().splitlines()
+    header = lines[0].split(",")
+    first, last = (dict(zip(header, line.split(","), strict=True)) for line in (lines[1], lines[-1]))
+    assert (first["dimension"], first["size"], first["residual"]) == ("2", "256", "")
+    assert (last["ensemble"], last["dimension"]) == ("kleitman-rothschild", "")

@@ -1,0 +1,59 @@
+"""Spectra of the causal matrix of the two-dimensional diamond, known exactly in the continuum."""
+
+import numpy as np
+import pytest
+from scipy.optimize import brentq
+
+from conetone.diagonalise.full import full_spectrum
+from conetone.operators.causal import causal_matrix
+from conetone.sprinkle.minkowski import minkowski_diamond
+
+ELEMENTS = 1000
+SEEDS = range(12)
+# Taking out one of n elements moves an eigenvalue by order one, so its mean is off by order one: 1/n here.
+FINITE_SIZE = 1 / ELEMENTS
+
+# Limits of the leading positive eigenvalues of i(C − Cᵀ)/n: 1/(2x). Johnston 2010 (thesis); Afshordi, Buck,
+# Dowker, Rideout, Sorkin & Yazdi 2012 (JHEP).
+LEADING = (0.428978, 0.159155, 0.108596, 0.079577, 0.064186)
+
+
+@pytest.fixture(scope="module")
+def matrices():
+    """Causal matrices of sprinklings, one for each seed."""
+    return [
+        causal_matrix(minkowski_diamond(ELEMENTS, np.random.default_rng(seed), dimension=2)) for seed in SEEDS
+    ]
+
+
+def exact_eigenvalues(count):
+    """1/(2x), falling, for x in {mπ} ∪ {x > 0: tan x = 2x}."""
+    roots = [brentq(lambda x: np.sin(x) - 2 * x * np.cos(x), 0.5, np.pi / 2)]
+    for m in range(1, count):
+        roots.append(brentq(lambda x: np.sin(x) - 2 * x * np.cos(x), m * np.pi, (m + 0.5) * np.pi))
+        roots.append(m * np.pi)
+    return 1 / (2 * np.sort(roots)[:count])
+
+
+def test_the_roots_give_the_printed_values():
+    np.testing.assert_allclose(exact_eigenvalues(5), LEADING, atol=5e-7)
+
+
+def test_leading_eigenvalues_of_the_antisymmetric_part(matrices):
+    spectra = np.array([full_spectrum(matrix, "antisymmetric").eigenvalues for matrix in matrices])
+    found = spectra[:, ::-1][:, :10] / ELEMENTS
+    error = found.std(axis=0, ddof=1) / np.sqrt(len(found))
+    assert (np.abs(found.mean(axis=0) - exact_eigenvalues(10)) < 5 * error + FINITE_SIZE).all()
+    assert (error[:5] < 0.01 * np.array(LEADING)).all()  # the comparison is one to a per cent
+    np.testing.assert_allclose(spectra[:, :10], -found * ELEMENTS, rtol=0, atol=1e-9)
+
+
+def test_leading_singular_values(matrices):
+    # s/n → 1/[π²(a − ½)(b − ½)], a, b ≥ 1: derived here, a product of two integrations (Volterra) in
+    # light-cone coordinates. The second and third are equal in the limit, apart at finite size.
+    singular = np.array([np.linalg.svd(matrix, compute_uv=False)[:3] for matrix in matrices]) / ELEMENTS
+    found = np.column_stack([singular[:, 0], singular[:, 1:].mean(axis=1)])
+    expected = 1 / (np.pi**2 * 0.5 * np.array([0.5, 1.5]))
+    np.testing.assert_allclose(expected, [0.405285, 0.135095], atol=5e-7)
+    error = found.std(axis=0, ddof=1) / np.sqrt(len(found))
+    assert (np.abs(found.mean(axis=0) - expected) < 5 * error + FINITE_SIZE).all()
