@@ -1,5 +1,6 @@
 """Runs the stage in a folder, and keeps the figures it drew beside the files it wrote."""
 
+import math
 from collections.abc import Iterable, Iterator
 from contextlib import chdir
 from dataclasses import dataclass, field
@@ -17,6 +18,12 @@ from conetone.sweep.requests import FigureRequest
 
 from .tables import Rows, write_tables
 
+WORDS = ("series", "ensemble", "count", "matrix", "part", "layer", "axis", "standing")
+
+
+def _number(text: str) -> float:
+    return float(text) if text else math.nan
+
 
 @dataclass
 class Drawn:
@@ -28,7 +35,10 @@ class Drawn:
     figures: dict[str, Figure] = field(default_factory=dict)
 
     def csv(self, name: str) -> pd.DataFrame:
-        return pd.read_csv(self.folder / "figures" / f"{name}.csv", float_precision="round_trip")
+        """The CSV beside a figure; Python's own `float` reads every digit back."""
+        path = self.folder / "figures" / f"{name}.csv"
+        words = pd.read_csv(path, dtype=str, keep_default_na=False)
+        return words.apply(lambda column: column if column.name in WORDS else column.map(_number))
 
     def table(self, name: str) -> pd.DataFrame:
         return pd.read_parquet(self.folder / f"{name}.parquet")
@@ -62,11 +72,11 @@ def artists(figure: Figure) -> dict[str, list[Artist]]:
 def texts(figure: Figure) -> Iterator[Text]:
     """Every text that is visible in a figure."""
     yield from figure.texts
-    yield from (label for label in (figure._supxlabel,) if label is not None)
     legends = [*figure.legends, *(axes.get_legend() for axes in figure.axes)]
     for legend in legends:
         yield from legend.get_texts() if legend else ()
-    for axes in [*figure.axes, *(child for axes in figure.axes for child in axes.child_axes)]:
+    children = [child for axes in figure.axes for child in axes.child_axes]
+    for axes in [*figure.axes, *children]:
         if not axes.axison:
             continue
         yield from [axes.title, *axes.texts]

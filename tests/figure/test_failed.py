@@ -5,6 +5,7 @@ from pathlib import Path
 from conetone.stages.figure import FOLDER
 from conetone.sweep.paths import figure_paths
 
+from .conftest import LONG
 from .drawing import Drawn, artists, draw, texts
 from .tables import ANTISYMMETRIC, LINK, make_tables
 
@@ -22,7 +23,6 @@ def test_exponents_without_a_value_are_named(crowd: Drawn) -> None:
     assert not (csv.loc[csv.layer == "exponent", "dimension"] == 3).any()
     note = written(crowd, "exponents")
     assert "Not drawn, because without a value: Minkowski diamond, $d$ = 3 (causal, antisymmetric);" in note
-    assert "Minkowski box, $d$ = 3 (causal, antisymmetric)" in note
     assert "Minkowski diamond, $d$ = 2 (" not in note
 
 
@@ -39,7 +39,7 @@ def test_an_empty_panel_says_why(crowd: Drawn, nothing: Drawn) -> None:
     for kind in ("spectra", "extrapolation", "local-slope"):
         name = f"{kind}-causal-antisymmetric"
         assert written(crowd, name).count(f" {REASON}") >= 1
-        assert written(nothing, name).count(REASON) == 3
+        assert written(nothing, name).count(REASON) == 2
 
 
 def test_all_failed_leaves_nothing_but_words(nothing: Drawn) -> None:
@@ -48,9 +48,11 @@ def test_all_failed_leaves_nothing_but_words(nothing: Drawn) -> None:
     assert "no exponent at infinite size" in written(nothing, "exponents")
 
 
-def test_one_size_has_a_spectrum_and_no_exponent(single: Drawn) -> None:
-    assert set(single.csv("spectra-causal-antisymmetric").layer) == {"spectrum", "fit", "residual", "window"}
-    assert single.csv("exponents").empty
+def test_one_size_has_a_spectrum_and_no_exponent(crowd: Drawn) -> None:
+    spectra, exponents = crowd.csv("spectra-causal-antisymmetric"), crowd.csv("exponents")
+    assert set(spectra[spectra.ensemble == LONG].layer) == {"spectrum", "fit", "residual", "window"}
+    assert set(spectra[spectra.ensemble == LONG]["size"]) == {256}
+    assert LONG not in set(exponents.ensemble)
 
 
 def test_an_operator_without_series(tmp_path: Path) -> None:

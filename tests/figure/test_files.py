@@ -1,6 +1,5 @@
 """The files of the stage: all of them, the same bytes every time, and nothing else."""
 
-import os
 import subprocess
 import sys
 from pathlib import Path
@@ -10,13 +9,12 @@ import pytest
 
 from conetone.errors import TableError
 from conetone.figure import files
-from conetone.stages.figure import FOLDER
+from conetone.stages.figure import FOLDER, draw_figures
 from conetone.sweep.paths import CLOSING_TABLES, closing_path, figure_paths
+from conetone.sweep.requests import FigureRequest
 
 from .drawing import Drawn, draw
-from .tables import ANTISYMMETRIC, DIAMONDS, make_tables
-
-SMALL = [DIAMONDS[0], ("kleitman-rothschild", None)]
+from .tables import ANTISYMMETRIC, DIAMONDS, make_tables, write_tables
 
 
 def content(folder: Path) -> dict[str, bytes]:
@@ -32,13 +30,13 @@ def test_every_promised_file_and_no_other(any_drawn: Drawn) -> None:
         assert head.startswith({".pdf": b"%PDF-", ".png": b"\x89PNG", ".csv": b"series,"}[path.suffix])
 
 
-def test_same_bytes_twice(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_same_bytes_twice(single: Drawn, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """Neither the date nor a reader's own settings of matplotlib show in any file."""
-    first = draw(tmp_path / "first", make_tables(SMALL), (ANTISYMMETRIC,))
     monkeypatch.setenv("SOURCE_DATE_EPOCH", "86400")
     with matplotlib.rc_context({"font.size": 30, "axes.facecolor": "red", "pdf.fonttype": 3}):
-        second = draw(tmp_path / "second", make_tables(SMALL), (ANTISYMMETRIC,))
-    one, other = content(first.folder / FOLDER), content(second.folder / FOLDER)
+        again = draw(tmp_path, single.rows, single.operators)
+    one, other = content(single.folder / FOLDER), content(again.folder / FOLDER)
+    assert list(one) == list(other)
     assert [name for name in one if one[name] != other[name]] == []
     assert not [name for name, found in one.items() if b"CreationDate" in found or b"ModDate" in found]
 
@@ -62,24 +60,14 @@ def test_a_file_is_whole_or_not_there(tmp_path: Path, monkeypatch: pytest.Monkey
     assert sorted(path.name for path in (tmp_path / "figures").iterdir()) == ["name.pdf", "name.png"]
 
 
-def test_a_damaged_table_is_an_error(tmp_path: Path) -> None:
-    drawn = draw(tmp_path, make_tables(SMALL[:1]), (ANTISYMMETRIC,))
+def test_a_damaged_table_is_an_error(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    write_tables(tmp_path, make_tables(DIAMONDS[:1]))
     path = tmp_path / "profiles.parquet"
     path.write_bytes(path.read_bytes()[:-50])
+    monkeypatch.chdir(tmp_path)
     with pytest.raises(TableError, match=r"profiles\.parquet: found a damaged file"):
-        run_in(tmp_path, drawn)
-
-
-def run_in(folder: Path, drawn: Drawn) -> None:
-    from conetone.stages.figure import draw_figures
-    from conetone.sweep.requests import FigureRequest
-
-    before = Path.cwd()
-    os.chdir(folder)
-    try:
-        draw_figures(FigureRequest(drawn.operators))
-    finally:
-        os.chdir(before)
+        draw_figures(FigureRequest((ANTISYMMETRIC,)))
+    assert not (tmp_path / FOLDER).exists()
 
 
 def test_other_stages_load_no_library_of_figures() -> None:

@@ -1,4 +1,4 @@
-"""Figures read well in print: widths, letters of at least 7 points, nothing outside, nothing on top of another."""
+"""Figures read well in print: widths, letters of at least 7 points, nothing outside, nothing over another."""
 
 from itertools import combinations
 

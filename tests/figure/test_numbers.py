@@ -26,7 +26,8 @@ def same(found: pd.Series, expected: pd.Series | np.ndarray) -> None:
 def test_spectra(study: Drawn, operator) -> None:
     numbers = study.csv(f"spectra-{operator.name}")
     profiles, spectrum = of_operator(study.table("profiles"), operator), layer(numbers, "spectrum")
-    assert spectrum[["series", "size"]].equals(profiles[["series", "size"]].astype({"series": object}))
+    assert spectrum["series"].tolist() == profiles["series"].tolist()
+    same(spectrum["size"], profiles["size"])
     same(spectrum["rank"], profiles["rank"])
     same(spectrum["magnitude"], np.exp(profiles["log_magnitude"]))
     same(spectrum["magnitude_low"], np.exp(profiles["log_magnitude"] - profiles["log_magnitude_error"]))
@@ -37,7 +38,7 @@ def test_spectra(study: Drawn, operator) -> None:
     same(layer(numbers, "residual")["residual"], fitted["residual"])
     window = layer(numbers, "window")
     largest = fitted[fitted["size"] == 1024].groupby("series", sort=False)
-    assert window["size"].tolist() == [1024] * 5
+    assert window["size"].tolist() == [1024] * 4
     same(window["rank"], largest["first_rank"].min())
     same(window["last_rank"], largest["last_rank"].max())
 
@@ -98,11 +99,11 @@ def test_exponents(study: Drawn) -> None:
     assert (drawn["axis"] == np.where(flat, "dimension", "other")).all()
     assert (drawn["position"] - table["dimension"])[flat].abs().max() < 0.5
     # what shares a dimension stands apart
-    assert drawn.groupby("axis")["position"].is_unique.all()
+    assert not drawn.duplicated(["axis", "position"]).any()
     curve = layer(numbers, "curve")
     # d / (2 (d − 1)), fractional integration along null rays
     same(curve["exponent"], curve["position"] / (2 * (curve["position"] - 1)))
-    assert (curve["position"].min(), curve["position"].max()) == (2, 4)
+    assert (curve["position"].min(), curve["position"].max()) == (2, 3)
     exact = layer(numbers, "expected")
     assert exact[["dimension", "part", "exponent", "standing"]].to_numpy().tolist() == [
         [2, "antisymmetric", 1, "exact"],

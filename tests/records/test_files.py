@@ -1,7 +1,6 @@
 """Table files: round trips, damage, atomicity, digests, and how others read them."""
 
 import os
-import struct
 
 import numpy as np
 import pandas as pd
@@ -193,21 +192,15 @@ def read_or_refuse(path):
         return None
 
 
-def pages_end(data):
-    """Where the pages end and the footer begins: its length stands before the closing magic number."""
-    (length,) = struct.unpack("<I", data[-8:-4])
-    return len(data) - 8 - length
-
-
 @pytest.mark.parametrize(
     ("table", "rows"), [(ORDERS, order_rows()), (SPECTRA, spectrum_rows())], ids=["orders", "spectra"]
 )
-def test_a_flipped_bit_in_a_page_is_found(table, rows, tmp_path):
+def test_a_flipped_bit_is_never_believed(table, rows, tmp_path):
     intact, damaged = tmp_path / "intact.parquet", tmp_path / "damaged.parquet"
     write_table(intact, table, rows, request="r")
     data = intact.read_bytes()
     refused = 0
-    positions = range(0, pages_end(data), 5)
+    positions = range(0, len(data), 3)  # pages, page headers, and Parquet's own footer
     for position in positions:
         flipped = bytearray(data)
         flipped[position] ^= 1 << position % 8
@@ -215,8 +208,8 @@ def test_a_flipped_bit_in_a_page_is_found(table, rows, tmp_path):
         found = read_or_refuse(damaged)
         assert found is None or found == rows, f"byte {position}"
         refused += found is None
-    # what does not matter to a reader: hints in page headers, the opening magic number
-    assert refused > 0.5 * len(positions)
+    # the others do not matter to a reader: statistics, hints in headers, the opening magic number
+    assert refused > 0.3 * len(positions)
 
 
 def test_a_flipped_bit_in_an_eigenvalue_is_found_where_only_it_is_read(tmp_path):
@@ -256,7 +249,7 @@ def test_other_content_is_refused(content, tmp_path):
     path = tmp_path / "o.parquet"
     path.write_bytes(content)
     for read in (read_rows, read_footer):
-        with pytest.raises(TableError, match="a damaged file"):
+        with pytest.raises(TableError, match="a damaged or foreign file"):
             read(path)
 
 
@@ -357,7 +350,7 @@ def test_footer(tmp_path):
 def test_a_parquet_file_of_somebody_else_is_refused(tmp_path):
     for table in (pa.table({"a": [1]}), pa.table({"a": [1]}).replace_schema_metadata({"b": "c"})):
         pq.write_table(table, tmp_path / "other.parquet")
-        with pytest.raises(TableError, match="a Parquet file that conetone did not write"):
+        with pytest.raises(TableError, match="conetone did not write it"):
             read_footer(tmp_path / "other.parquet")
 
 

@@ -202,7 +202,7 @@ def _label_strip(axes: Axes, strip: list[str], each: float) -> None:
     if level:
         # a double name may break at its dash
         words = [name.replace("–", "– ") for name in strip]
-        names = [wrapped(word, each, SMALL_POINTS, lines=4).replace("– ", "–") for word in words]
+        names = [wrapped(word, 0.92 * each, SMALL_POINTS, lines=8).replace("– ", "–") for word in words]
     else:
         names = [wrapped(name, 1.3, SMALL_POINTS, lines=2) for name in strip]
     axes.set_xticks(range(len(strip)), names, rotation=0 if level else 90)

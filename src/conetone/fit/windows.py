@@ -29,7 +29,7 @@ class Growth:
             raise ValueError(text)
         coefficient, _, power = text.rpartition("n^")
         growth = cls(float(coefficient.rstrip(" *") or 1), float(power))
-        if not (growth.coefficient > 0 and 0 < growth.power <= 1):
+        if not (0 < growth.coefficient < float("inf") and 0 < growth.power <= 1):
             raise ValueError(text)
         return growth
 

@@ -24,8 +24,8 @@ RESUME_FOLDER = "resume"
 def write_table(path: Path, table: Table, rows: Sequence[Row], *, request: str, inputs: str = "") -> None:
     """Write rows as Parquet through the table's schema: temporary file, fsync, rename.
 
-    The footer holds the request the rows answer, the digest of the inputs, the digest of the content, and
-    the software. Raises TableError for rows that do not fit the schema.
+    The footer holds the request the rows answer, the digest of the inputs, the digest of the content and of
+    every column, and the software. Raises TableError for rows that do not fit the schema.
     """
     data = table.build(rows)
     footer = {
@@ -34,6 +34,7 @@ def write_table(path: Path, table: Table, rows: Sequence[Row], *, request: str, 
         "request": request,
         "inputs": inputs,
         "content": content_digest(data.select(table.content_columns)),
+        "columns": {name: column_digest(data.column(name)) for name in data.column_names},
         "software": software(),
     }
     metadata = {FOOTER_KEY: json.dumps(footer, sort_keys=True).encode()}
@@ -61,44 +62,64 @@ def write_table(path: Path, table: Table, rows: Sequence[Row], *, request: str, 
 
 
 def read_rows(path: Path, columns: Sequence[str] | None = None) -> list[dict[str, Any]]:
-    """Rows of one table file, checksums verified; raises TableError if it is missing or damaged."""
+    """Rows of one table file, every value verified; raises TableError if it is missing or damaged.
+
+    Page checksums cover pages only: a bit flipped in Parquet's own footer can rename a column or drop rows
+    silently. So every column read is held against its digest.
+    """
     try:
         data = pq.read_table(path, columns=columns, page_checksum_verification=True, partitioning=None)
-    except (OSError, pa.ArrowException) as error:
-        raise _damaged(path, error) from None
-    return list(data.to_pylist())
+        expected = _own_footer(data.schema.metadata)["columns"]
+        for name in columns or expected:
+            if column_digest(data.column(name)) != expected[name]:
+                raise ValueError(f"column {name} does not match its digest")
+        return list(data.to_pylist())
+    except Exception as error:  # whatever decoding raises, the file is not the one that was written
+        raise _unreadable(path, error) from None
 
 
 def read_footer(path: Path) -> dict[str, Any]:
     """What the footer of a table file says; raises TableError if the file is missing, damaged or foreign."""
     try:
-        metadata: Mapping[bytes, bytes] = pq.read_schema(path).metadata or {}
-    except (OSError, pa.ArrowException) as error:
-        raise _damaged(path, error) from None
-    if FOOTER_KEY not in metadata:
-        raise TableError(str(path), "a Parquet file that conetone did not write", "one of conetone's tables")
-    return dict(json.loads(metadata[FOOTER_KEY]))
+        return _own_footer(pq.read_schema(path).metadata)
+    except Exception as error:  # as above
+        raise _unreadable(path, error) from None
 
 
-def _damaged(path: Path, error: Exception) -> TableError:
-    reason = "no file" if isinstance(error, FileNotFoundError) else f"a damaged file ({error})"
-    return TableError(str(path), reason, "an intact Parquet table", "delete it and run the sweep again")
+def _own_footer(metadata: Mapping[bytes, bytes] | None) -> dict[str, Any]:
+    if FOOTER_KEY not in (metadata or {}):
+        raise LookupError("conetone did not write it")
+    footer = json.loads((metadata or {})[FOOTER_KEY])
+    missing = {"request", "inputs", "content", "columns"} - set(footer)
+    if missing:
+        raise ValueError(f"its footer lacks {min(missing)}")
+    return dict(footer)
+
+
+def _unreadable(path: Path, error: Exception) -> TableError:
+    reason = "no file" if isinstance(error, FileNotFoundError) else f"a damaged or foreign file ({error})"
+    advice = "delete it and run the sweep again"
+    return TableError(str(path), reason, "an intact table that conetone wrote", advice)
+
+
+def column_digest(column: pa.ChunkedArray) -> str:
+    """SHA-256 of a column's type and values; equal for equal values, however the file was written."""
+    array = column.combine_chunks()
+    # Arrow calls the entries of a list `item` in memory and `element` once read from a file
+    kind = f"list of {array.type.value_type}" if pa.types.is_list(array.type) else array.type
+    digest = hashlib.sha256(f"{kind} {len(array)}\n".encode())
+    if array.type == pa.list_(pa.float64()):
+        digest.update(json.dumps(array.value_lengths().to_pylist()).encode())
+        digest.update(np.asarray(array.flatten().to_numpy(zero_copy_only=False)).tobytes())
+    else:
+        digest.update(repr(array.to_pylist()).encode())
+    return digest.hexdigest()
 
 
 def content_digest(data: pa.Table) -> str:
-    """SHA-256 of names, types and values; equal for equal values, however the file was written."""
-    digest = hashlib.sha256()
-    for name in data.column_names:
-        column = data.column(name).combine_chunks()
-        # Arrow calls the entries of a list `item` in memory and `element` once read from a file
-        kind = f"list of {column.type.value_type}" if pa.types.is_list(column.type) else column.type
-        digest.update(f"\n{name} {kind} {len(column)}\n".encode())
-        if column.type == pa.list_(pa.float64()):
-            digest.update(json.dumps([None if v is None else len(v) for v in column.to_pylist()]).encode())
-            digest.update(np.asarray(column.flatten().to_numpy(zero_copy_only=False)).tobytes())
-        else:
-            digest.update(repr(column.to_pylist()).encode())
-    return digest.hexdigest()
+    """SHA-256 of the names and digests of a table's columns."""
+    columns = [f"{name} {column_digest(data.column(name))}" for name in data.column_names]
+    return hashlib.sha256("\n".join(columns).encode()).hexdigest()
 
 
 def inputs_digest(paths: Sequence[Path]) -> str:

@@ -12,11 +12,21 @@ Standing = Literal["exact", "published", "heuristic"]
 
 @dataclass(frozen=True)
 class ExpectedExponent:
-    """An expected exponent α of |λ_r| ∝ r^(−α), with its source and standing."""
+    """An expected exponent α of |λ_r| ∝ r^(−α), with its source and standing.
+
+    `caveat` says how the law departs from a pure power, where it is known to.
+    """
 
     value: float
     standing: Standing
     source: str
+    caveat: str | None = None
+
+
+# The kernel of C + Cᵀ factorises in light-cone coordinates; products of two 1/k laws count as x log x does.
+LOGARITHM = (
+    "the law of the symmetric part in two dimensions holds a logarithm: slopes lie below 1 at any size"
+)
 
 
 def null_direction_exponent(dimension: int) -> float:
@@ -37,5 +47,8 @@ def expected_exponent(
     if (region, dimension, part) == ("diamond", 2, "antisymmetric"):
         return ExpectedExponent(1.0, "exact", "Pauli–Jordan spectrum, Johnston 2010; Afshordi et al. 2012")
     return ExpectedExponent(
-        null_direction_exponent(dimension), "heuristic", "d/(2(d−1)), fractional integration along null rays"
+        null_direction_exponent(dimension),
+        "heuristic",
+        "d/(2(d−1)), fractional integration along null rays",
+        LOGARITHM if (dimension, part) == (2, "symmetric") else None,
     )

@@ -219,7 +219,7 @@ def _exponent_row(
         "status": "failed" if reason else "ok",
         "reason": reason,
     }
-    return {**row, "warnings": warnings_of(row)}
+    return {**row, "warnings": warnings_of(row, expected.caveat if expected else None)}
 
 
 def _expected(keys: dict[str, Any]) -> ExpectedExponent | None:

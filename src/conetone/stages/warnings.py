@@ -12,8 +12,8 @@ LARGE_SCATTER = 0.03
 UNEVEN_RATIOS = 1.5
 
 
-def warnings_of(row: Mapping[str, Any]) -> list[str]:
-    """Warnings about one row of the exponents table, worst first."""
+def warnings_of(row: Mapping[str, Any], caveat: str | None) -> list[str]:
+    """Warnings about one row of the exponents table, worst first; `caveat` is of the expected exponent."""
     found = []
     lost = row["replicates_attempted"] - row["replicates_used"]
     if lost:
@@ -27,6 +27,8 @@ def warnings_of(row: Mapping[str, Any]) -> list[str]:
             found.append(f"the ordering fraction is {deviation:.1f} σ from {expected:.4g}")
     if row["exponent"] is None:
         return found
+    if caveat:
+        found.append(caveat)
     if len(row["sizes"]) < FIRST_LOOK_SIZES:
         found.append(f"first look: {len(row['sizes'])} sizes, a published number needs {FIRST_LOOK_SIZES}")
     if row["scatter"] > LARGE_SCATTER:
