@@ -6,6 +6,8 @@ from .drawing import Drawn, draw
 from .tables import ANTISYMMETRIC, DIAMONDS, SYMMETRIC, failed, make_tables
 
 LONG = "causal-set-of-an-ensemble-whose-name-goes-on-and-on"
+# Slopes as at the steps of a spectrum, beyond what the axis shows.
+STEEP = (7.0, -3.0, 2.5)
 UNBREAKABLE = "pseudoextraordinarilylongunbreakablename"
 
 
@@ -29,6 +31,8 @@ def crowd(tmp_path_factory: pytest.TempPathFactory) -> Drawn:
     rows = make_tables([*DIAMONDS[:2], (UNBREAKABLE, None), ("$b$", None)])
     one_size = make_tables([(LONG, 3)], sizes=[256])
     rows = {name: rows[name] + one_size[name] for name in rows}
+    for i, slope in enumerate(STEEP):
+        rows["profiles"][i]["slope"] = slope
     rows = failed(rows, lambda row: row["dimension"] == 3)
     rows = failed(rows, lambda row: row["ensemble"] == "$b$", also_spectra=True)
     return draw(tmp_path_factory.mktemp("crowd"), rows, (ANTISYMMETRIC,))

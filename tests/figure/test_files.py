@@ -33,7 +33,7 @@ def test_every_promised_file_and_no_other(any_drawn: Drawn) -> None:
 def test_same_bytes_twice(single: Drawn, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """Neither the date nor a reader's own settings of matplotlib show in any file."""
     monkeypatch.setenv("SOURCE_DATE_EPOCH", "86400")
-    with matplotlib.rc_context({"font.size": 30, "axes.facecolor": "red", "pdf.fonttype": 3}):
+    with matplotlib.rc_context({"font.size": 30, "axes.ymargin": 0.4, "lines.antialiased": False}):
         again = draw(tmp_path, single.rows, single.operators)
     one, other = content(single.folder / FOLDER), content(again.folder / FOLDER)
     assert list(one) == list(other)
@@ -65,7 +65,7 @@ def test_a_damaged_table_is_an_error(tmp_path: Path, monkeypatch: pytest.MonkeyP
     path = tmp_path / "profiles.parquet"
     path.write_bytes(path.read_bytes()[:-50])
     monkeypatch.chdir(tmp_path)
-    with pytest.raises(TableError, match=r"profiles\.parquet: found a damaged file"):
+    with pytest.raises(TableError, match=r"profiles\.parquet: found a damaged"):
         draw_figures(FigureRequest((ANTISYMMETRIC,)))
     assert not (tmp_path / FOLDER).exists()
 

@@ -6,6 +6,7 @@ import pytest
 from matplotlib.figure import Figure
 from matplotlib.transforms import Bbox
 
+from .conftest import STEEP
 from .drawing import Drawn, texts
 
 COLUMN, PAGE = 86, 178
@@ -65,6 +66,20 @@ def test_no_two_panels_touch(any_drawn: Drawn) -> None:
         for one, other in combinations([axes for axes in figure.axes if axes.axison], 2):
             assert not overlap(one.bbox, other.bbox), name
             assert min(one.bbox.width, one.bbox.height) > 0.4 * figure.dpi
+
+
+def test_steps_do_not_flatten_the_slopes(crowd: Drawn) -> None:
+    """The axis ends where it is said to; what lies beyond is counted below the figure."""
+    figure, csv = (
+        crowd.figures["local-slope-causal-antisymmetric"],
+        crowd.csv("local-slope-causal-antisymmetric"),
+    )
+    panels = [axes for axes in figure.axes if axes.axison]
+    assert {axes.get_ylim() for axes in panels} == {(-0.2, 2.0)}
+    slopes = csv["slope"][csv.layer == "slope"]
+    assert set(STEEP) < set(slopes)
+    note = " ".join(text.get_text() for text in figure.texts)
+    assert f"{len(STEEP)} of {len(slopes)} slopes lie beyond the axis." in note
 
 
 @pytest.mark.parametrize("kind", ["spectra", "extrapolation", "local-slope"])

@@ -19,6 +19,7 @@ TABLES = ("fits", "bins", "profiles", "exponents", "extrapolations")
 # What differs between two runs of the same computation.
 MEASURED = ["seconds", "peak_mib"]
 PATIENCE = 240.0
+UP_TO_AGGREGATE = ("--", "--until", "aggregate")
 
 
 @dataclass
@@ -64,6 +65,10 @@ class Study:
         done = self.run("--json", *options)
         assert done.returncode == 0, done.stderr
         return json.loads(done.stdout)
+
+    def compute(self, *options: str) -> dict:
+        """Run to the end of aggregate: everything but the figures, which take longest in a small sweep."""
+        return self.run_well(*options, *UP_TO_AGGREGATE)
 
     def start(self, *options: str) -> subprocess.Popen:
         # a session of its own: a signal to the process reaches nobody else, as from a scheduler

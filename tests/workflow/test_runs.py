@@ -12,7 +12,7 @@ import pytest
 
 from conetone.sweep.definition import load_sweep
 from conetone.sweep.plan import Plan
-from tests.workflow.conftest import CONETONE, Study, assert_equal_contents
+from tests.workflow.conftest import CONETONE, UP_TO_AGGREGATE, Study, assert_equal_contents
 
 CONTRACT = {
     "orders": "ensemble dimension size replicate elements relations links height ordering_fraction digest"
@@ -144,10 +144,12 @@ def test_options_that_snakemake_does_not_know(finished: Study) -> None:
 
 def test_plain_snakemake_gives_the_same_tables(finished: Study, tmp_path) -> None:
     other = Study(tmp_path, finished.fields)
-    done = subprocess.run(other.snakemake(), capture_output=True, text=True, timeout=240, check=False)
+    done = subprocess.run(
+        other.snakemake("--until", "aggregate"), capture_output=True, text=True, timeout=240, check=False
+    )
     assert done.returncode == 0, done.stderr
     assert_equal_contents(finished, other)
-    assert other.run_well()["jobs_run"] == 0, "conetone run takes over what plain snakemake made"
+    assert other.compute()["jobs_run"] == 0, "conetone run takes over what plain snakemake made"
 
 
 def test_plain_snakemake_refuses_a_faulty_sweep_in_our_words(study: Study) -> None:
@@ -160,56 +162,56 @@ def test_plain_snakemake_refuses_a_faulty_sweep_in_our_words(study: Study) -> No
 
 def test_one_core_gives_the_same_tables(finished: Study, tmp_path) -> None:
     other = Study(tmp_path, finished.fields)
-    other.run_well("--cores", "1")
+    other.compute("--cores", "1")
     assert_equal_contents(finished, other)
 
 
 def test_growth_computes_only_what_is_new(study: Study) -> None:
-    study.run_well()
+    study.compute()
     old = study.stamps("orders", "spectra")
 
     study.fields["sizes"].append(180)
-    grown = study.run_well()
-    assert grown["jobs_run"] == 1 + 1 + 1 + 2  # sprinkle, diagonalise, fit, aggregate and figure
+    grown = study.compute()
+    assert grown["jobs_run"] == 1 + 1 + 1 + 1  # sprinkle, diagonalise, fit, aggregate
     assert old.items() <= study.stamps("orders", "spectra").items()
     old = study.stamps("orders", "spectra")
 
     study.fields["operators"].append({"matrix": "link", "part": "antisymmetric"})
-    grown = study.run_well()
-    assert grown["jobs_run"] == 0 + 4 + 1 + 2
+    grown = study.compute()
+    assert grown["jobs_run"] == 0 + 4 + 1 + 1
     assert old.items() <= study.stamps("orders", "spectra").items()
     old = study.stamps("orders", "spectra")
 
     study.fields["ensembles"].append({"ensemble": "kleitman-rothschild"})
-    grown = study.run_well()
-    assert grown["jobs_run"] == 4 + 8 + 2 + 2
+    grown = study.compute()
+    assert grown["jobs_run"] == 4 + 8 + 2 + 1
     assert old.items() <= study.stamps("orders", "spectra").items()
 
 
 def test_more_replicates_compute_only_the_new_ones(study: Study) -> None:
-    study.run_well()
+    study.compute()
     before = study.rows_computed()
     study.fields["replicates"] = 7
-    study.run_well()
+    study.compute()
     after = study.rows_computed()
     assert len(after) == 7 * 3 * 2
     assert before.items() <= after.items()
     fresh = Study(study.folder / "fresh", study.fields)
     fresh.folder.mkdir()
-    fresh.run_well()
+    fresh.compute()
     assert_equal_contents(study, fresh)
 
 
 def test_removing_hides_and_loses_nothing(study: Study) -> None:
-    study.run_well()
+    study.compute()
     whole, stamps = study.contents(), study.stamps("orders", "spectra")
     sizes = study.fields["sizes"]
     study.fields["sizes"] = [*sizes[:2], 181]
-    study.run_well()
+    study.compute()
     assert set(pd.read_parquet(study.home / "orders")["size"]) == {64, 90, 181}
     study.fields["sizes"] = sizes
-    again = study.run_well()
-    assert again["jobs_run"] == 1 + 2, "only fit, aggregate and figure"
+    again = study.compute()
+    assert again["jobs_run"] == 1 + 1, "only fit and aggregate"
     assert study.stamps("orders", "spectra") == stamps
     for name, frame in study.contents().items():
         pd.testing.assert_frame_equal(frame, whole[name], check_exact=True, obj=name)
@@ -223,10 +225,10 @@ def test_stopping_early_by_snakemakes_own_option(study: Study) -> None:
 
 
 def test_a_new_window_refits_and_computes_no_spectrum(study: Study) -> None:
-    study.run_well()
+    study.compute()
     old = study.stamps("orders", "spectra")
     study.fields["windows"] = {"to": ["0.25 * n^0.75", "0.3 * n^0.75"]}
-    assert study.run_well()["jobs_run"] == 1 + 2
+    assert study.compute()["jobs_run"] == 1 + 1
     assert study.stamps("orders", "spectra") == old
 
 
@@ -241,18 +243,18 @@ def test_a_faulty_sweep_writes_nothing(study: Study) -> None:
 
 
 def test_a_damaged_table_is_named_and_a_rerun_mends_it(study: Study) -> None:
-    study.run_well()
+    study.compute()
     victim = next(study.home.glob("spectra/*.parquet"))
     data = bytearray(victim.read_bytes())
     data[len(data) // 3] ^= 0x10
     victim.write_bytes(data)
     study.fields["windows"] = {"bins": 11}  # a change that reads the spectra again
-    done = study.run()
+    done = study.run(*UP_TO_AGGREGATE)
     assert done.returncode == 1
     assert victim.name in done.stderr
     assert "delete it and run the sweep again" in done.stderr
     victim.unlink()
-    study.run_well()
+    study.compute()
 
 
 def test_fewer_than_three_sizes_is_said_not_guessed(study: Study) -> None:

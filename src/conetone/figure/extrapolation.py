@@ -110,7 +110,7 @@ def _draw_series(axes: Axes, numbers: pd.DataFrame, series: str) -> None:
         x, ink = points["abscissa"], style["color"]
         total, inner = f"{name}-total:{series}", f"{name}-statistical:{series}"
         draw_errors(axes, x, points["total_low"], points["total_high"], ink, total)
-        draw_caps(axes, x, points["total_low"], points["total_high"], ink, inner)
+        draw_caps(axes, x, points["statistical_low"], points["statistical_high"], ink, inner)
         axes.plot(x, points["exponent"], gid=f"{name}:{series}", zorder=4, **style)
 
 

@@ -12,7 +12,16 @@ from matplotlib.ticker import FixedLocator, NullFormatter
 
 from conetone.figure.closing import ClosingTables, Operator, Row, layer, of_series
 from conetone.figure.labels import ensemble_label, operator_symbol
-from conetone.figure.panels import PLAIN_NUMBERS, add_legend, add_note, log_x, new_page, no_ticks, say
+from conetone.figure.panels import (
+    PLAIN_NUMBERS,
+    add_legend,
+    add_note,
+    log_x,
+    log_y,
+    new_page,
+    no_ticks,
+    say,
+)
 from conetone.figure.style import INK, Look, draw_errors, looks_of_sizes
 from conetone.figure.window import draw_window, window_handles, window_rows
 
@@ -112,9 +121,7 @@ _FIT: dict[str, Any] = {"color": "black", "linewidth": 0.6}
 
 def _scale(above: Axes, below: Axes, residual: "pd.Series[float]") -> None:
     log_x(below)
-    above.set_yscale("log")
-    above.yaxis.set_major_formatter(PLAIN_NUMBERS)
-    above.yaxis.set_minor_formatter(NullFormatter())
+    log_y(above)
     largest = float(residual.abs().max()) if residual.notna().any() else 0.0
     limit = max(largest * 1.4, 2.2 * LINEAR_UP_TO)
     below.set_yscale("symlog", linthresh=LINEAR_UP_TO, linscale=0.8)

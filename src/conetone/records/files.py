@@ -97,7 +97,8 @@ def _own_footer(metadata: Mapping[bytes, bytes] | None) -> dict[str, Any]:
 
 
 def _unreadable(path: Path, error: Exception) -> TableError:
-    reason = "no file" if isinstance(error, FileNotFoundError) else f"a damaged or foreign file ({error})"
+    why = " ".join(str(error).split())  # on one line
+    reason = "no file" if isinstance(error, FileNotFoundError) else f"a damaged or foreign file ({why})"
     advice = "delete it and run the sweep again"
     return TableError(str(path), reason, "an intact table that conetone wrote", advice)
 

@@ -29,7 +29,7 @@ LOGARITHM = (
 )
 
 
-def null_direction_exponent(dimension: int) -> float:
+def null_direction_exponent(dimension: float) -> float:
     """d / (2 (d − 1)): the cone's indicator acts along a null ray as integration of order d/2."""
     return dimension / (2 * (dimension - 1))
 
