@@ -53,7 +53,9 @@ def imports(module: Path) -> set[str]:
             found |= {alias.name for alias in node.names}
         elif isinstance(node, ast.ImportFrom):
             assert node.level == 0, f"{module}: relative imports hide the arrows"
-            found.add(f"{node.module}.{node.names[0].name}" if node.module == "conetone" else str(node.module))
+            found.add(
+                f"{node.module}.{node.names[0].name}" if node.module == "conetone" else str(node.module)
+            )
     return found
 
 
