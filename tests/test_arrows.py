@@ -21,7 +21,7 @@ ALLOWED = {
     "figure": {"errors", "reference"},
     "stages": {"errors", "reference", "sprinkle", "operators", "diagonalise", "fit", "aggregate", "figure",
                "records", "sweep"},
-    "run": {"errors", "records", "sweep"},
+    "run": {"errors", "records", "sprinkle", "sweep"},
     "cli": {"errors", "run", "stages", "sweep"},
     "__main__": {"cli"},
 }  # fmt: skip

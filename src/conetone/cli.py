@@ -143,12 +143,13 @@ def aggregate(request: RequestText, threads: Threads = 1) -> None:
 
 
 @app.command()
-def figure(request: RequestText) -> None:
+def figure(request: RequestText, threads: Threads = 1) -> None:
     """Draw the figures of a sweep from its tables (a job of the workflow)."""
     from conetone.stages.figure import draw_figures
     from conetone.sweep.requests import FigureRequest
 
-    draw_figures(FigureRequest.parse(request))
+    with _threads(threads):
+        draw_figures(FigureRequest.parse(request))
 
 
 def _threads(count: int) -> AbstractContextManager[object]:

@@ -29,6 +29,10 @@ class SweepError(InputError):
     """A sweep file that does not say one clear thing."""
 
 
+class UsageError(InputError):
+    """A command line that asks for something that cannot be."""
+
+
 class RequestError(InputError):
     """A job request (JSON) with an unknown, missing or impossible field."""
 

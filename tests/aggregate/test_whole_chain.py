@@ -5,7 +5,7 @@ replicates; nothing is stacked, shared or updated. Every copy of the package mus
 """
 
 from itertools import pairwise
-from math import ceil, exp, hypot, inf, log, sqrt
+from math import ceil, exp, hypot, log, sqrt
 from statistics import fmean, stdev
 
 import numpy as np
@@ -158,7 +158,7 @@ def package_exponent(spectra):
                 )
             )
     estimates = stack_copies(SIZES, [len(spectra[size]) for size in SIZES], candidates)
-    return extrapolate(estimates, OMEGAS, MOST_SIZES_CUT, np.array([inf])).limit
+    return extrapolate(estimates, OMEGAS, MOST_SIZES_CUT).limit
 
 
 @pytest.mark.parametrize("steps", [0.0, 0.1])

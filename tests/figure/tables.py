@@ -95,6 +95,7 @@ def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: n
                     "misfit": 0.023,
                     "copies_replicate": [0, 1],
                     "replicates_used": 2,
+                    "replicates_failed": 0,
                     "replicates_attempted": 2,
                     "status": "ok",
                 }
@@ -121,6 +122,7 @@ def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: n
             "systematic": 0.031,
             "sizes": list(sizes),
             "replicates_used": 10,
+            "replicates_failed": 0,
             "replicates_attempted": 10,
             # d / (2 (d − 1)), as conetone.reference.exponents has it
             "expected": keys["dimension"] / (2 * (keys["dimension"] - 1)) if known else None,

@@ -9,8 +9,8 @@ import pytest
 
 from conetone.errors import TableError
 from conetone.figure import files
-from conetone.stages.figure import FOLDER, draw_figures
-from conetone.sweep.paths import CLOSING_TABLES, closing_path, figure_paths
+from conetone.stages.figure import draw_figures
+from conetone.sweep.paths import CLOSING_TABLES, FIGURE_FOLDER, closing_path, figure_paths
 from conetone.sweep.requests import FigureRequest
 
 from .drawing import Drawn, draw
@@ -35,7 +35,7 @@ def test_same_bytes_twice(single: Drawn, tmp_path: Path, monkeypatch: pytest.Mon
     monkeypatch.setenv("SOURCE_DATE_EPOCH", "86400")
     with matplotlib.rc_context({"font.size": 30, "axes.ymargin": 0.4, "lines.antialiased": False}):
         again = draw(tmp_path, single.rows, single.operators)
-    one, other = content(single.folder / FOLDER), content(again.folder / FOLDER)
+    one, other = content(single.folder / FIGURE_FOLDER), content(again.folder / FIGURE_FOLDER)
     assert list(one) == list(other)
     assert [name for name in one if one[name] != other[name]] == []
     assert not [name for name, found in one.items() if b"CreationDate" in found or b"ModDate" in found]
@@ -43,7 +43,7 @@ def test_same_bytes_twice(single: Drawn, tmp_path: Path, monkeypatch: pytest.Mon
 
 def test_letters_stay_letters_in_the_pdf(study: Drawn) -> None:
     """Type 42 is TrueType, which publishers take; Type 3 many refuse."""
-    for path in (study.folder / FOLDER).glob("*.pdf"):
+    for path in (study.folder / FIGURE_FOLDER).glob("*.pdf"):
         assert b"/Subtype /Type0" in path.read_bytes()
         assert b"/Subtype /Type3" not in path.read_bytes()
 
@@ -67,7 +67,7 @@ def test_a_damaged_table_is_an_error(tmp_path: Path, monkeypatch: pytest.MonkeyP
     monkeypatch.chdir(tmp_path)
     with pytest.raises(TableError, match=r"profiles\.parquet: found a damaged"):
         draw_figures(FigureRequest((ANTISYMMETRIC,)))
-    assert not (tmp_path / FOLDER).exists()
+    assert not (tmp_path / FIGURE_FOLDER).exists()
 
 
 def test_other_stages_load_no_library_of_figures() -> None:

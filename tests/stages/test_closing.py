@@ -66,7 +66,7 @@ def test_failed_replicates_are_counted_and_named() -> None:
     (row,) = close(study)
     assert (row["replicates_used"], row["replicates_attempted"]) == (22, 24)
     assert row["status"] == "ok"
-    assert "2 of 24 replicates are not used: see status in spectra/" in row["warnings"]
+    assert "2 of 24 replicates failed: see status in spectra/" in row["warnings"]
     pairs = set(zip(row["copies_size"], row["copies_replicate"], strict=True))
     assert pairs == {(s, r) for s in SIZES for r in range(6)} - {(90, 1), (90, 4)}
 

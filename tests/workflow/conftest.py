@@ -19,6 +19,7 @@ TABLES = ("fits", "bins", "profiles", "exponents", "extrapolations")
 # What differs between two runs of the same computation.
 MEASURED = ["seconds", "peak_mib"]
 PATIENCE = 240.0
+WITNESS = Path(__file__).parent / "witness"
 UP_TO_AGGREGATE = ("--", "--until", "aggregate")
 
 
@@ -55,9 +56,24 @@ class Study:
             *options,
         ]
 
+    @property
+    def environment(self) -> dict[str, str]:
+        """Of every process: with a witness that notes each row a job computes."""
+        path = os.pathsep.join(filter(None, [str(WITNESS), os.environ.get("PYTHONPATH")]))
+        return {**os.environ, "PYTHONPATH": path, "TEST_HISTORY": str(self.folder / "history")}
+
+    def history(self) -> list[str]:
+        """One entry for each row that any job has computed: its table and its replicate."""
+        return (self.folder / "history").read_text().splitlines()
+
     def run(self, *options: str) -> subprocess.CompletedProcess:
         return subprocess.run(
-            self.command(*options), capture_output=True, text=True, timeout=PATIENCE, check=False
+            self.command(*options),
+            capture_output=True,
+            text=True,
+            timeout=PATIENCE,
+            check=False,
+            env=self.environment,
         )
 
     def run_well(self, *options: str) -> dict:
@@ -78,6 +94,7 @@ class Study:
             stderr=subprocess.PIPE,
             text=True,
             start_new_session=True,
+            env=self.environment,
         )
 
     def snakemake(self, *options: str) -> list[str]:

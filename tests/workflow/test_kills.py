@@ -4,6 +4,7 @@ import random
 import signal
 import subprocess
 import time
+from collections import Counter
 from pathlib import Path
 
 import psutil
@@ -19,7 +20,7 @@ def fields() -> dict:
         "sweep": "killed",
         "root_seed": 11,
         "ensembles": [{"ensemble": "minkowski-diamond", "dimension": 3}],
-        "sizes": [256, 362, 724],
+        "sizes": [256, 362, 1024],
         "replicates": [4, 4, 24],
         "operators": [{"matrix": "causal", "part": "antisymmetric"}],
     }
@@ -29,6 +30,7 @@ def fields() -> dict:
 def undisturbed(tmp_path_factory: pytest.TempPathFactory, fields: dict) -> Study:
     study = Study(tmp_path_factory.mktemp("undisturbed"), fields)
     study.compute()
+    assert len(study.history()) == 2 * (4 + 4 + 24), "the history sees every row computed"
     return study
 
 
@@ -59,16 +61,23 @@ def processes_left(study: Study) -> list[psutil.Process]:
     return found
 
 
-def finish(study: Study, undisturbed: Study) -> None:
-    """Run again after a kill, and hold the result against the undisturbed run."""
+def finish(study: Study, undisturbed: Study, *, all_at_once: bool = False) -> None:
+    """Run again after a kill, and hold the result against the undisturbed run.
+
+    With `all_at_once` the jobs themselves were killed: rows of the last SAVE_SECONDS may be lost.
+    """
     before = study.rows_computed()
     study.compute()
     after = study.rows_computed()
     recomputed = [row for row, seconds in before.items() if after[row] != seconds]
     assert not recomputed
+    if not all_at_once:
+        twice = {row: count for row, count in Counter(study.history()).items() if count > 1}
+        assert not twice
+    assert not list(study.home.rglob(".*.part"))
     assert_equal_contents(study, undisturbed)
     assert not processes_left(study)
-    assert not (study.home / "resume").exists()
+    assert not list((study.home / "resume").rglob("*.parquet"))
 
 
 @pytest.mark.parametrize(
@@ -119,7 +128,8 @@ def test_sigkill_of_everything(tmp_path: Path, fields: dict, undisturbed: Study)
     for process in [*psutil.Process(run.pid).children(recursive=True), psutil.Process(run.pid)]:
         process.kill()
     run.communicate(timeout=60)
-    finish(study, undisturbed)
+    (study.home / "orders" / ".half-written.parquet.1.part").write_bytes(b"PAR1")
+    finish(study, undisturbed, all_at_once=True)
 
 
 def test_beside_a_live_run_it_refuses_and_says_which(

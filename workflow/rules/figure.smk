@@ -13,4 +13,4 @@ rule figure:
         mem_mb=plan.job("figure", "all").memory_mb,
     threads: 1
     shell:
-        "conetone figure --request {params.request:q} 2>> {log:q}"
+        "conetone figure --request {params.request:q} --threads {threads} 2>> {log:q}"

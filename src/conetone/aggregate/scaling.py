@@ -50,44 +50,49 @@ class Averages:
 class Extrapolation:
     """Exponents at infinite size and along the way.
 
-    `limit`: Averages of shape (copies, 1) at n = ∞. `curve`: the same at the sizes asked for.
     `at_sizes`: window and model averages at each size. `weights` (candidates,) of windows and models,
     `omega_weights` (omegas,), `reduced_chi2` of the scaling fits.
     """
 
-    limit: Averages
-    curve: Averages
     at_sizes: Averages
     weights: Floats
     omega_weights: Floats
     reduced_chi2: float
+    _lines: Sequence["_Lines"]
+    _line_weights: Floats  # (copies, lines, candidates)
+
+    def at(self, sizes: Floats) -> Averages:
+        """Averaged exponents at sizes on the curve, shape (copies, sizes); ∞ is a size."""
+        return _average(self._line_weights, self._lines, sizes)
+
+    @property
+    def limit(self) -> Averages:
+        """Averaged exponents at infinite size, shape (copies, 1)."""
+        return self.at(np.array([np.inf]))
 
 
 def extrapolate(
-    estimates: SizeEstimates, omegas: Sequence[float], most_sizes_cut: int, curve_sizes: Floats
+    estimates: SizeEstimates, omegas: Sequence[float], most_sizes_cut: int
 ) -> Extrapolation | None:
     """Average α∞ over windows × models × ω × smallest-size cuts; None with fewer than three usable sizes.
 
     Each candidate is a straight line in n^−ω, weighted by statistical error and misfit together, and
     widened by its own χ²/ν if above 1. Weights: exp(−½[information criterion of the window and model +
-    χ² of the line + 2 × sizes cut]), after Jay & Neil 2021. Copies pass through all of it.
+    χ² of the line + 2 × sizes not used]), after Jay & Neil 2021. Copies pass through all of it.
     """
     criterion = _criterion(estimates)  # (copies, candidates)
     lines = list(_lines(estimates, omegas, most_sizes_cut))
     if not lines:
         return None
-    total = np.stack([criterion + line.chi2 + 2 * line.sizes_cut for line in lines], axis=1)
+    total = np.stack([criterion + line.chi2 + 2 * line.sizes_unused for line in lines], axis=1)
     # copies in which a line does not exist give it no weight
     exists = np.stack([line.exists for line in lines], axis=1)
     total = np.where(exists, total, np.inf)
     if not np.isfinite(total[0]).any():
         return None
     weights = weights_of(total, axis=(1, 2))  # (copies, lines, candidates)
-    limit = _average(weights, lines, np.array([np.inf]))
     reduced = np.stack([line.chi2[0] / np.maximum(line.degrees[0], 1) for line in lines])
     return Extrapolation(
-        limit=limit,
-        curve=_average(weights, lines, curve_sizes),
         at_sizes=_average_at_sizes(estimates, criterion),
         weights=weights[0].sum(axis=0),
         omega_weights=np.array(
@@ -97,6 +102,8 @@ def extrapolate(
             ]
         ),
         reduced_chi2=float(np.nansum(weights[0] * np.where(weights[0] > 0, reduced, 0))),
+        _lines=lines,
+        _line_weights=weights,
     )
 
 
@@ -124,7 +131,7 @@ class _Lines:
     """Straight lines in n^−ω from one ω and one cut; arrays of shape (copies, candidates) unless said."""
 
     omega: float
-    sizes_cut: int
+    sizes_unused: Floats
     gains: tuple[Floats, Floats]  # intercept, slope: (copies, sizes, candidates)
     intercept: Floats
     slope: Floats
@@ -154,7 +161,9 @@ def _lines(estimates: SizeEstimates, omegas: Sequence[float], most_sizes_cut: in
         for cut in range(most_sizes_cut + 1):
             used = fitted & (np.arange(len(x)) >= cut)[:, np.newaxis]
             count = used.sum(axis=1)
-            exists = count >= SMALLEST_NUMBER_OF_SIZES
+            # without a fit at the last size cut, this is the line of one cut less again
+            again = ~fitted[:, cut - 1] if cut else np.zeros_like(count, dtype=bool)
+            exists = (count >= SMALLEST_NUMBER_OF_SIZES) & ~again
             if not exists[0].any():
                 continue
             precision = np.divide(1, total, out=np.zeros_like(total), where=used & (total > 0))
@@ -165,7 +174,7 @@ def _lines(estimates: SizeEstimates, omegas: Sequence[float], most_sizes_cut: in
             intercept, slope = (gain0 * exponent).sum(axis=1), (gain1 * exponent).sum(axis=1)
             residual = exponent - intercept[:, np.newaxis] - slope[:, np.newaxis] * x
             yield _Lines(
-                omega, cut, (gain0, gain1), intercept, slope,
+                omega, len(x) - count, (gain0, gain1), intercept, slope,
                 chi2=(precision * residual**2).sum(axis=1), degrees=count - 2.0, exists=exists,
                 statistical_variance=statistical, total_variance=total,
             )  # fmt: skip

@@ -17,7 +17,7 @@ VERSION = 1
 
 Row = Mapping[str, Any]
 
-TEXT, COUNT, REAL, FLAG = pa.string(), pa.int64(), pa.float64(), pa.bool_()
+TEXT, COUNT, REAL = pa.string(), pa.int64(), pa.float64()
 REALS, COUNTS = pa.list_(pa.float64()), pa.list_(pa.int64())
 
 
@@ -85,7 +85,7 @@ ENSEMBLE_KEYS = (
     Column("ensemble", TEXT, "name of the ensemble"),
     Column("dimension", COUNT, "spacetime dimension, null where the ensemble has none", nullable=True),
     *(
-        Column(name, REAL, f"the ensemble's parameter {name}", nullable=True)
+        Column(name, COUNT, f"the ensemble's parameter {name}", nullable=True)
         for name in PARAMETER_NAMES
         if name != "dimension"
     ),
@@ -97,11 +97,14 @@ REPLICATE_KEYS = (
     Column("size", COUNT, "number of elements asked for", "elements"),
     Column("replicate", COUNT, "number of the replicate, from 0"),
 )
+OPERATOR_KEYS = (
+    Column("matrix", TEXT, "matrix of the order: causal, link"),
+    Column("part", TEXT, "self-adjoint part: symmetric M + Mᵀ, antisymmetric i(M − Mᵀ)"),
+)
 SERIES_KEYS = (
     Column("series", TEXT, "id of the ensemble with its parameters and the operator, across sizes"),
     *ENSEMBLE_KEYS,
-    Column("matrix", TEXT, "matrix of the order: causal, link"),
-    Column("part", TEXT, "self-adjoint part: symmetric M + Mᵀ, antisymmetric i(M − Mᵀ)"),
+    *OPERATOR_KEYS,
 )
 COSTS = (
     Column("seconds", REAL, "wall time of this row", "s", measured=True),
@@ -130,8 +133,7 @@ SPECTRA = Table(
     "spectra",
     (
         *REPLICATE_KEYS,
-        Column("matrix", TEXT, "matrix of the order: causal, link"),
-        Column("part", TEXT, "self-adjoint part: symmetric M + Mᵀ, antisymmetric i(M − Mᵀ)"),
+        *OPERATOR_KEYS,
         Column("extent", TEXT, "full: every eigenvalue"),
         Column("eigenvalues", REALS, "eigenvalues, ascending", nullable=True),
         Column("elements", COUNT, "number of elements", "elements", nullable=True),
@@ -172,7 +174,8 @@ FITS = Table(
         Column("copies_replicate", COUNTS, "the replicate that each copy leaves out"),
         Column("ordering_fraction", REAL, "mean over replicates", nullable=True),
         Column("ordering_fraction_error", REAL, "its standard error", nullable=True),
-        Column("replicates_used", COUNT, "replicates with a usable spectrum"),
+        Column("replicates_used", COUNT, "replicates whose spectrum is ok and has ranks"),
+        Column("replicates_failed", COUNT, "replicates whose spectrum is failed or suspect"),
         Column("replicates_attempted", COUNT, "replicates asked for"),
         *STATUS,
     ),
@@ -225,7 +228,8 @@ EXPONENTS = Table(
             "scatter", REAL, "largest scatter of log λ about a power law beyond its errors", nullable=True
         ),
         Column("sizes", COUNTS, "sizes used", "elements"),
-        Column("replicates_used", COUNT, "spectra used, all sizes together"),
+        Column("replicates_used", COUNT, "spectra that enter the exponent, all sizes together"),
+        Column("replicates_failed", COUNT, "spectra that are failed or suspect"),
         Column("replicates_attempted", COUNT, "spectra asked for"),
         Column("expected", REAL, "exponent expected by theory", nullable=True),
         Column("expected_standing", TEXT, "exact, published or heuristic", nullable=True),

@@ -2,6 +2,7 @@
 
 import json
 import os
+import re
 import subprocess
 import sys
 from collections.abc import Iterator, Sequence
@@ -10,10 +11,13 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
+from conetone.errors import UsageError
 from conetone.run.workflow import FOLDER_MARK, RESULTS_KEY, RUN_MARK, snakefile
 from conetone.sweep.cost import memory_of_this_machine_mib
 
 LOGS = Path("logs") / "run"
+# Snakemake's options that conetone sets itself.
+OURS = {"--config", "--configfile", "--configfiles", "--directory", "--snakefile"}
 # Share of this machine's memory that jobs may claim together.
 MEMORY_SHARE = 0.9
 
@@ -41,11 +45,18 @@ class Engine:
         """Removes Snakemake's own lock."""
         return [*self._base_command, "--unlock"]
 
+    def __post_init__(self) -> None:
+        """Refuse options that would take the sweep or its folder away from us."""
+        for option in self.options:
+            name = option.partition("=")[0]
+            if name in OURS or re.match(r"-[Cds](?!-)", name):
+                allowed = "options about how jobs run; the sweep file and --results say what and where"
+                raise UsageError("options after --", option, allowed)
+
     @property
     def passes_through(self) -> bool:
         """Whether the options ask for a dry run, whose text is for the person, not for us."""
-        short = [option for option in self.options if option.startswith("-") and not option.startswith("--")]
-        return bool({"--dry-run", "--dryrun"} & set(self.options)) or any("n" in option for option in short)
+        return any(re.fullmatch("--dry-?run|-[npkF]*n[npkF]*", option) for option in self.options)
 
     def command(self, events: Path) -> list[str]:
         """The whole command line; events go to this file as JSON lines."""

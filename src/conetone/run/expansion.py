@@ -4,10 +4,9 @@ import json
 from pathlib import Path
 
 from rich import box
-from rich.console import Console
 from rich.table import Table
 
-from conetone.run.outcome import PLAIN_WIDTH
+from conetone.run.outcome import plain_console
 from conetone.run.progress import duration
 from conetone.sweep.blocks import blocks_of
 from conetone.sweep.definition import load_sweep
@@ -22,10 +21,6 @@ def print_expansion(sweep_file: Path, results: Path, *, as_json: bool) -> None:
         _print_json(plan, folder)
     else:
         _print_text(plan, folder)
-
-
-def _missing(plan: Plan, folder: Path, stage: str) -> int:
-    return sum(any(not (folder / o).exists() for o in job.outputs) for job in plan.jobs[stage].values())
 
 
 def _print_json(plan: Plan, folder: Path) -> None:
@@ -45,7 +40,7 @@ def _print_json(plan: Plan, folder: Path) -> None:
         "jobs": {
             stage: {
                 "count": len(plan.jobs[stage]),
-                "missing": _missing(plan, folder, stage),
+                "missing": len(plan.missing(folder, stage)),
                 "core_seconds": round(sum(job.seconds for job in plan.jobs[stage].values()), 1),
                 "peak_mib": round(max(job.mib for job in plan.jobs[stage].values())),
             }
@@ -56,9 +51,7 @@ def _print_json(plan: Plan, folder: Path) -> None:
 
 
 def _print_text(plan: Plan, folder: Path) -> None:
-    console = Console(highlight=False, markup=False)
-    if not console.is_terminal:
-        console = Console(highlight=False, markup=False, width=PLAIN_WIDTH, no_color=True)
+    console = plain_console()
     sizes = ", ".join(str(size) for size in plan.sweep.sizes)
     console.print(
         f"Sweep {plan.sweep.name}: {len(plan.points)} points, {len(plan.series)} series, sizes {sizes}."
@@ -84,7 +77,7 @@ def _print_text(plan: Plan, folder: Path) -> None:
         jobs.add_row(
             stage,
             str(len(of_stage)),
-            str(_missing(plan, folder, stage)),
+            str(len(plan.missing(folder, stage))),
             duration(sum(job.seconds for job in of_stage)),
             f"{max(job.mib for job in of_stage):.0f} MiB",
         )

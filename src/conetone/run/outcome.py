@@ -12,6 +12,7 @@ from rich.table import Table
 
 from conetone.records.files import read_rows
 from conetone.run.progress import duration
+from conetone.sprinkle.catalogue import PARAMETER_NAMES
 from conetone.sweep.paths import CLOSING_TABLES, closing_path, figure_paths
 from conetone.sweep.plan import Plan
 from conetone.sweep.points import EnsembleChoice
@@ -22,7 +23,10 @@ PLAIN_WIDTH = 150
 
 @dataclass(frozen=True)
 class Outcome:
-    """The exponents of a sweep and where everything stands; `folder` is absolute."""
+    """The exponents of a sweep and where everything stands; `folder` is absolute.
+
+    `jobs_missing` counts jobs whose outputs do not exist, `replicates_lost` spectra that failed.
+    """
 
     sweep: str
     folder: Path
@@ -30,6 +34,8 @@ class Outcome:
     figures: list[Path]
     jobs: int
     jobs_run: int
+    jobs_missing: int
+    replicates_lost: int
     seconds: float
 
     @classmethod
@@ -39,25 +45,29 @@ class Outcome:
         rows = read_rows(exponents) if exponents.exists() else []  # options such as --until stop before it
         drawn = [path for path in figure_paths(plan.sweep.operators) if path.suffix == ".png"]
         figures = [path for path in drawn if (folder / path).exists()]
-        return cls(plan.sweep.name, folder, rows, figures, len(plan.all_jobs), jobs_run, seconds)
+        missing, lost = len(plan.missing(folder)), sum(row["replicates_failed"] for row in rows)
+        jobs = len(plan.all_jobs)
+        return cls(plan.sweep.name, folder, rows, figures, jobs, jobs_run, missing, lost, seconds)
 
-    @property
-    def replicates_lost(self) -> int:
-        """Spectra that were asked for and cannot be used."""
-        return sum(row["replicates_attempted"] - row["replicates_used"] for row in self.exponents)
+
+def plain_console() -> Console:
+    """Standard output without mark-up: as wide as the terminal, or PLAIN_WIDTH in a file or pipe."""
+    console = Console(highlight=False, markup=False)
+    if console.is_terminal:
+        return console
+    return Console(highlight=False, markup=False, width=PLAIN_WIDTH, no_color=True)
 
 
 def print_table(outcome: Outcome) -> None:
     """Print the closing table, its notes, and the paths, to standard output."""
-    console = Console(highlight=False, markup=False)
-    if not console.is_terminal:
-        console = Console(highlight=False, markup=False, width=PLAIN_WIDTH, no_color=True)
+    console = plain_console()
     if outcome.jobs_run:
         console.print(f"{outcome.jobs_run} jobs run in {duration(outcome.seconds)}, {outcome.jobs} in all.")
-    else:
+    elif not outcome.jobs_missing:
         console.print(f"Nothing to do: all {outcome.jobs} jobs are up to date ({outcome.seconds:.1f} s).")
+    if outcome.jobs_missing:
+        console.print(f"The options given stop early: {outcome.jobs_missing} jobs are still to do.")
     if not outcome.exponents:
-        console.print("No exponents yet: the options given stopped before stage aggregate.")
         return
     notes: dict[str, int] = {}
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
@@ -95,6 +105,8 @@ def print_json(outcome: Outcome) -> None:
                 "folder": str(outcome.folder),
                 "jobs": outcome.jobs,
                 "jobs_run": outcome.jobs_run,
+                "jobs_missing": outcome.jobs_missing,
+                "replicates_lost": outcome.replicates_lost,
                 "seconds": round(outcome.seconds, 3),
                 "exponents": rows,
                 "figures": [str(outcome.folder / path) for path in outcome.figures],
@@ -106,7 +118,7 @@ def print_json(outcome: Outcome) -> None:
 
 def series_label(row: dict[str, Any]) -> str:
     """`minkowski-diamond, dimension 3: causal antisymmetric`."""
-    given = {"dimension": row["dimension"]} if row["dimension"] is not None else {}
+    given = {name: row[name] for name in PARAMETER_NAMES if row[name] is not None}
     choice = EnsembleChoice(row["ensemble"], tuple(given.items()), row["count"])
     return f"{choice.label}: {row['matrix']} {row['part']}"
 

@@ -30,7 +30,7 @@ def snakemake_started_by_hand(folder: Path) -> psutil.Process | None:
     """A live Snakemake in this folder that no `conetone run` started."""
     for process in psutil.process_iter():
         try:
-            here = any("snakemake" in part for part in process.cmdline()[:4]) and process.cwd() == str(folder)
+            here = _is_snakemake(process) and process.cwd() == str(folder)
             if here and RUN_MARK not in process.environ() and FOLDER_MARK not in process.environ():
                 return process
         except (psutil.Error, OSError):
@@ -53,7 +53,8 @@ def stop(processes: list[psutil.Process]) -> None:
 
 def _is_snakemake(process: psutil.Process) -> bool:
     try:
-        return "snakemake" in process.cmdline()
+        # `python -m snakemake …`, or `python …/bin/snakemake …`
+        return any(Path(part).name == "snakemake" for part in process.cmdline()[:3])
     except psutil.Error:
         return False
 

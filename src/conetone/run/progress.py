@@ -22,7 +22,7 @@ class Tally:
 
     def __init__(self, plan: Plan, folder: Path, cores: int) -> None:
         self._plan, self._cores = plan, cores
-        self._missing = [job for job in plan.all_jobs if any(not (folder / o).exists() for o in job.outputs)]
+        self._missing = plan.missing(folder)
         self._described: dict[int, tuple[str, str]] = {}
         self._running: dict[int, float] = {}
         self._finished: set[int] = set()

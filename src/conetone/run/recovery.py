@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from pathlib import Path
 
 from conetone.errors import LiveRunError
+from conetone.records.files import RESUME_FOLDER
 from conetone.run.engine import Engine
 from conetone.run.growth import to_resume
 from conetone.run.processes import processes_of, snakemake_started_by_hand, stop
@@ -39,10 +40,19 @@ def recover(folder: Path, engine: Engine) -> list[str]:
         )
         if unlocking.returncode == 0:
             done.append("removed the lock of a dead run")
+    for partial in partial_files(folder):
+        partial.unlink(missing_ok=True)
     kept = [output for output in _unrecorded_outputs(folder) if to_resume(folder, output)]
     if kept:
         done.append(f"kept {len(kept)} tables that a dead run had finished")
     return done
+
+
+def partial_files(folder: Path) -> list[Path]:
+    """Files that a killed job was writing: they never had their name, so nothing ever read them."""
+    homes = (Path(), Path("orders"), Path("spectra"), Path("pieces"), Path("figures"), Path(RESUME_FOLDER))
+    deep = [folder / RESUME_FOLDER / home for home in homes]
+    return [path for home in [*(folder / home for home in homes), *deep] for path in home.glob(".*.part")]
 
 
 def _unrecorded_outputs(folder: Path) -> Iterator[Path]:

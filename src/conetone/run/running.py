@@ -1,6 +1,7 @@
 """`conetone run`: lock, recover, let Snakemake work, show progress and the outcome."""
 
 import os
+import shutil
 import signal
 import sys
 import time
@@ -48,15 +49,17 @@ def run_sweep(
     engine = Engine(sweep_file, folder, cores or _all_cores(), tuple(snakemake_options))
     with run_lock(folder):
         notes = recover(folder, engine)
+        follow_the_sweep(folder, plan)
         if engine.passes_through:
             return engine.attached()
-        follow_the_sweep(folder, plan)
         if not quiet:
             for note in notes:
                 print(f"{plan.sweep.name}: {note}", file=sys.stderr, flush=True)
         tally = Tally(plan, folder, engine.cores)
         _work(engine, tally, _display(quiet))
-        _remove_empty(folder / RESUME_FOLDER)
+        if not plan.missing(folder):
+            # rows that no job asked for: with options that stop early, jobs may still come for theirs
+            shutil.rmtree(folder / RESUME_FOLDER, ignore_errors=True)
         outcome = Outcome.read(folder, plan, jobs_run=tally.done, seconds=time.monotonic() - start)
     if as_json:
         print_json(outcome)
@@ -157,14 +160,3 @@ def _tail(path: Path, lines: int = TAIL) -> str:
     except OSError:
         return ""
     return "\n".join(f"  {line}" for line in text[-lines:])
-
-
-def _remove_empty(folder: Path) -> None:
-    """Remove what is left in the resume folder after everything is done: rows no job asked for."""
-    for path in sorted(folder.rglob("*"), reverse=True):
-        if path.is_dir():
-            path.rmdir()
-        else:
-            path.unlink()
-    if folder.is_dir():
-        folder.rmdir()

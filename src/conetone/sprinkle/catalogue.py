@@ -11,8 +11,7 @@ from conetone.sprinkle.layered import kleitman_rothschild
 from conetone.sprinkle.minkowski import minkowski_box, minkowski_diamond
 from conetone.sprinkle.order import Order
 
-Value = int | float
-Parameters = Mapping[str, Value]
+Parameters = Mapping[str, int]
 
 
 @dataclass(frozen=True)
@@ -55,7 +54,7 @@ ENSEMBLES: Mapping[str, Ensemble] = {
             "uniform sprinkling into a causal diamond of flat spacetime",
             "Bombelli, Lee, Meyer & Sorkin 1987; ordering fraction: Myrheim 1978, Meyer 1988",
             region="diamond",
-            ordering_fraction=lambda parameters: ordering_fraction_of_diamond(int(parameters["dimension"])),
+            ordering_fraction=lambda parameters: ordering_fraction_of_diamond(parameters["dimension"]),
         ),
         Ensemble(
             "minkowski-box",
@@ -82,4 +81,4 @@ PARAMETER_NAMES: tuple[str, ...] = tuple(
 
 def sprinkle(ensemble: str, parameters: Parameters, elements: int, generator: np.random.Generator) -> Order:
     """Draw one order of a catalogued ensemble; raises KeyError for a name that is not catalogued."""
-    return ENSEMBLES[ensemble].sampler(elements, generator, **{k: int(v) for k, v in parameters.items()})
+    return ENSEMBLES[ensemble].sampler(elements, generator, **parameters)

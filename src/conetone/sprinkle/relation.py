@@ -1,7 +1,7 @@
 """A strictly upper triangular relation on labelled elements, one bit a pair, triangular half only.
 
 Rows are kept in groups of 64. Row i of group g = i // 64 holds the columns from 64 g on, as
-little-endian 64-bit words, so n elements take about n²/16 bytes: 66 kB at n = 1024, 6 MB at n = 10,000.
+little-endian 64-bit words, so n elements take about n²/16 bytes: 70 kB at n = 1024, 6.4 MB at 10,000.
 """
 
 from collections.abc import Iterator

@@ -80,16 +80,17 @@ def _series_tables(fits: list[dict[str, Any]], settings: ExtrapolationSettings) 
         }
     replicates = [len(series.replicates[size]) for size in series.sizes]
     estimates = stack_copies(series.sizes, replicates, [_candidate(series, c) for c in series.candidates])
-    found = extrapolate(estimates, settings.omegas, settings.most_sizes_cut, np.array([np.inf]))
+    found = extrapolate(estimates, settings.omegas, settings.most_sizes_cut)
     if found is None:
         averages = measure(average_at_sizes(estimates), replicates)
-        reason = f"{len(series.sizes)} usable sizes; extrapolation takes {SMALLEST_NUMBER_OF_SIZES}"
+        reason = (
+            f"no window and model has a fit at {SMALLEST_NUMBER_OF_SIZES} sizes, the largest among them;"
+            f" {len(series.sizes)} sizes have any"
+        )
         row = _exponent_row(series, settings, None, None, reason)
         return {"fits": [*fits, *_average_rows(series, averages, replicates)], "exponents": [row]}
     omega = settings.omegas[int(found.omega_weights.argmax())]
     curve = _curve_sizes(series.sizes, omega)
-    found = extrapolate(estimates, settings.omegas, settings.most_sizes_cut, curve)
-    assert found is not None
     weights = dict(zip(series.candidates, found.weights, strict=True))
     for fit in fits:
         fit["weight"] = float(weights[fit["window"], fit["model"]]) if fit["status"] == "ok" else None
@@ -98,7 +99,7 @@ def _series_tables(fits: list[dict[str, Any]], settings: ExtrapolationSettings) 
     return {
         "fits": [*fits, *_average_rows(series, averages, replicates)],
         "exponents": [_exponent_row(series, settings, found, limit, None)],
-        "extrapolations": _curve_rows(series, omega, curve, measure(found.curve, replicates)),
+        "extrapolations": _curve_rows(series, omega, curve, measure(found.at(curve), replicates)),
     }
 
 
@@ -138,15 +139,17 @@ def _average_rows(series: _Series, averages: Measured, replicates: Sequence[int]
     first = 0
     for s, (size, count) in enumerate(zip(series.sizes, replicates, strict=True)):
         template = series.of_size(size)
+        known = bool(np.isfinite(averages.value[s]))
+        reason = "no candidate of this size has a fit at the largest size, which weights need"
         rows.append(
             {
                 **template,
                 "window": "average",
                 "model": "average",
-                "exponent": float(averages.value[s]),
-                "statistical": float(averages.statistical[s]),
-                "misfit": float(averages.systematic[s]),
-                "copies": averages.copies[first : first + count, s],
+                "exponent": float(averages.value[s]) if known else None,
+                "statistical": float(averages.statistical[s]) if known else None,
+                "misfit": float(averages.systematic[s]) if known else None,
+                "copies": averages.copies[first : first + count, s] if known else None,
                 "weight": None,
                 **dict.fromkeys(
                     (
@@ -159,8 +162,8 @@ def _average_rows(series: _Series, averages: Measured, replicates: Sequence[int]
                         "chi2_copies",
                     )
                 ),
-                "status": "ok",
-                "reason": None,
+                "status": "ok" if known else "failed",
+                "reason": None if known else reason,
             }
         )
         first += count
@@ -201,6 +204,7 @@ def _exponent_row(
         "scatter": max((by_size[size]["scatter"] for size in series.sizes), default=None),
         "sizes": series.sizes,
         "replicates_used": sum(by_size[size]["replicates_used"] for size in series.sizes),
+        "replicates_failed": sum(fit["replicates_failed"] for fit in by_size.values()),
         "replicates_attempted": sum(fit["replicates_attempted"] for fit in by_size.values()),
         "expected": expected.value if expected else None,
         "expected_standing": expected.standing if expected else None,
@@ -219,7 +223,8 @@ def _exponent_row(
         "status": "failed" if reason else "ok",
         "reason": reason,
     }
-    return {**row, "warnings": warnings_of(row, expected.caveat if expected else None)}
+    left_out = [size for size in by_size if size not in series.sizes]
+    return {**row, "warnings": warnings_of(row, left_out, expected.caveat if expected else None)}
 
 
 def _expected(keys: dict[str, Any]) -> ExpectedExponent | None:

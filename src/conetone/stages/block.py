@@ -54,8 +54,8 @@ def run_block(
     def save(path: Path) -> None:
         write_table(path, table, [rows[r] for r in sorted(rows)], request=request, inputs=inputs)
 
-    try:
-        with stop_on_signals():
+    with stop_on_signals():  # around the saving, too: a second signal must not cut it short
+        try:
             for replicate in replicates:
                 if replicate in rows:
                     continue
@@ -65,10 +65,12 @@ def run_block(
                     save(waiting)
                     saved = time.monotonic()
             save(output)
-    except StopRequested as stopped:
-        save(waiting)
-        log(f"stopped by {stopped}; {len(rows)} of {len(replicates)} replicates are kept")
-        raise InterruptedRunError(f"stopped by {stopped}; finished replicates wait in {waiting}") from None
+        except StopRequested as stopped:
+            save(waiting)
+            log(f"stopped by {stopped}; {len(rows)} of {len(replicates)} replicates are kept")
+            raise InterruptedRunError(
+                f"stopped by {stopped}; finished replicates wait in {waiting}"
+            ) from None
     waiting.unlink(missing_ok=True)
 
 

@@ -1,7 +1,5 @@
 """Stage figure: draw the closing tables, and write the numbers beside each figure."""
 
-from pathlib import Path
-
 from conetone.figure.closing import ClosingTables
 from conetone.figure.dimension import draw_exponents, exponent_numbers
 from conetone.figure.extrapolation import draw_extrapolation, extrapolation_numbers
@@ -12,15 +10,15 @@ from conetone.figure.style import theme
 from conetone.records.files import read_rows
 from conetone.records.tables import COUNT, REAL, SERIES_KEYS, TABLES, TEXT
 from conetone.stages.block import log
-from conetone.sweep.paths import CLOSING_TABLES, closing_path
+from conetone.sweep.paths import CLOSING_TABLES, FIGURE_FOLDER, FIGURE_KINDS, closing_path
 from conetone.sweep.requests import FigureRequest
 
-FOLDER = Path("figures")
-KINDS = {
-    "spectra": (spectra_numbers, draw_spectra),
-    "extrapolation": (extrapolation_numbers, draw_extrapolation),
-    "local-slope": (slope_numbers, draw_slope),
-}
+_DRAWING = (
+    (spectra_numbers, draw_spectra),
+    (extrapolation_numbers, draw_extrapolation),
+    (slope_numbers, draw_slope),
+)
+KINDS = dict(zip(FIGURE_KINDS, _DRAWING, strict=True))
 
 
 def draw_figures(request: FigureRequest) -> None:
@@ -28,12 +26,12 @@ def draw_figures(request: FigureRequest) -> None:
     tables = read_closing_tables()
     with theme():
         numbers = exponent_numbers(tables, request.operators)
-        write_figure(FOLDER / "exponents", draw_exponents(numbers, tables, request.operators), numbers)
+        write_figure(FIGURE_FOLDER / "exponents", draw_exponents(numbers, tables, request.operators), numbers)
         for operator in request.operators:
             for kind, (numbers_of, draw) in KINDS.items():
                 name = f"{kind}-{operator.name}"
                 numbers = numbers_of(tables, operator)
-                write_figure(FOLDER / name, draw(numbers, tables, operator), numbers)
+                write_figure(FIGURE_FOLDER / name, draw(numbers, tables, operator), numbers)
                 log(f"drew {name}")
 
 

@@ -50,6 +50,7 @@ class _Usable:
     magnitudes: list[NDArray[np.float64]]
     ordering_fractions: NDArray[np.float64]
     attempted: int
+    failed: int
 
 
 def _usable(request: FitRequest, rows: list[dict[str, Any]]) -> _Usable:
@@ -61,6 +62,7 @@ def _usable(request: FitRequest, rows: list[dict[str, Any]]) -> _Usable:
         [magnitudes for _, magnitudes in kept],
         np.array([row["ordering_fraction"] for row, _ in kept], dtype=np.float64),
         attempted=len(rows),
+        failed=len(rows) - len(good),
     )
 
 
@@ -74,6 +76,7 @@ def _tables_of_size(request: FitRequest, size: int, rows: list[dict[str, Any]]) 
         "ordering_fraction_error": None,
         "scatter": None,
         "replicates_used": len(usable.replicates),
+        "replicates_failed": usable.failed,
         "replicates_attempted": usable.attempted,
     }
     if len(usable.replicates) < 2:

@@ -1,6 +1,6 @@
 """What a reader should know before quoting an exponent, as sentences in its row."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 FIRST_LOOK_SIZES = 5
@@ -12,14 +12,18 @@ LARGE_SCATTER = 0.03
 UNEVEN_RATIOS = 1.5
 
 
-def warnings_of(row: Mapping[str, Any], caveat: str | None) -> list[str]:
-    """Warnings about one row of the exponents table, worst first; `caveat` is of the expected exponent."""
+def warnings_of(row: Mapping[str, Any], left_out: Sequence[int], caveat: str | None) -> list[str]:
+    """Warnings about one row of the exponents table, worst first.
+
+    `left_out` are sizes of the sweep that have no fit; `caveat` belongs to the expected exponent.
+    """
     found = []
-    lost = row["replicates_attempted"] - row["replicates_used"]
-    if lost:
-        found.append(
-            f"{lost} of {row['replicates_attempted']} replicates are not used: see status in spectra/"
-        )
+    if row["replicates_failed"]:
+        attempted = row["replicates_attempted"]
+        found.append(f"{row['replicates_failed']} of {attempted} replicates failed: see status in spectra/")
+    if left_out:
+        sizes = ", ".join(str(size) for size in left_out)
+        found.append(f"sizes without a fit are left out: {sizes}; the reasons stand in fits.parquet")
     expected, error = row["ordering_fraction_expected"], row["ordering_fraction_error"]
     if expected is not None and error:
         deviation = abs(row["ordering_fraction"] - expected) / error

@@ -1,4 +1,4 @@
-"""A job whose outputs appear together: taken up again if an earlier run finished them unrecorded."""
+"""A job with several tables: taken up, all or none, if an earlier run finished them unrecorded."""
 
 from collections.abc import Mapping, Sequence
 from pathlib import Path

@@ -1,6 +1,6 @@
 """Seconds and memory of one replicate, from its size: for block lengths, forecasts and the memory check.
 
-Constants fitted to one core (Zen 3 class) at n = 256 … 1024; they set job lengths and time forecasts,
+Constants measured on one core at n = 1024; they set job lengths and time forecasts,
 never a number in a table.
 """
 
@@ -20,6 +20,9 @@ START_SECONDS = 1.0
 FIT_SECONDS, CLOSING_SECONDS = 1.5, 8.0
 # Bytes per matrix entry at the peak: the matrix, its transpose's sum or difference, and LAPACK's copy.
 BYTES_AN_ENTRY = 24
+SPRINKLE_BYTES_AN_ENTRY = 9
+# An eigenvalue as a Python number, in a list, and in arrays.
+BYTES_AN_EIGENVALUE = 64
 BASE_MIB = 150
 
 
@@ -36,6 +39,16 @@ def sprinkle_seconds(size: int) -> float:
 def diagonalise_mib(size: int) -> float:
     """Expected peak memory, MiB, of one full spectrum of either part."""
     return BASE_MIB + BYTES_AN_ENTRY * size**2 / MIB
+
+
+def sprinkle_mib(size: int) -> float:
+    """Expected peak memory, MiB, of drawing one order: links take dense float32 and boolean matrices."""
+    return BASE_MIB + SPRINKLE_BYTES_AN_ENTRY * size**2 / MIB
+
+
+def fit_mib(eigenvalues: int) -> float:
+    """Expected peak memory, MiB, of fitting sizes with at most this many eigenvalues each."""
+    return BASE_MIB + BYTES_AN_EIGENVALUE * eigenvalues / MIB
 
 
 def largest_size(available_mib: float) -> int:

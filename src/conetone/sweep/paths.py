@@ -7,7 +7,10 @@ from conetone.sweep.points import OperatorChoice
 
 PIECE_TABLES = ("fits", "bins", "profiles")
 CLOSING_TABLES = ("fits", "bins", "profiles", "exponents", "extrapolations")
+FIGURE_FOLDER = Path("figures")
 FIGURE_SUFFIXES = (".pdf", ".png", ".csv")
+# Drawn once for each operator; `exponents` is drawn once for all.
+FIGURE_KINDS = ("spectra", "extrapolation", "local-slope")
 
 
 def orders_path(block: Block) -> Path:
@@ -32,12 +35,11 @@ def closing_path(table: str) -> Path:
 
 def figure_names(operators: tuple[OperatorChoice, ...]) -> list[str]:
     """Stems of all figures of a sweep."""
-    kinds = ("spectra", "extrapolation", "local-slope")
-    return ["exponents", *(f"{kind}-{operator.name}" for kind in kinds for operator in operators)]
+    return ["exponents", *(f"{kind}-{operator.name}" for kind in FIGURE_KINDS for operator in operators)]
 
 
 def figure_paths(operators: tuple[OperatorChoice, ...]) -> list[Path]:
     """Every file that the figure stage writes."""
     return [
-        Path("figures") / f"{name}{suffix}" for name in figure_names(operators) for suffix in FIGURE_SUFFIXES
+        FIGURE_FOLDER / f"{name}{suffix}" for name in figure_names(operators) for suffix in FIGURE_SUFFIXES
     ]

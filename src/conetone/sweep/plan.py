@@ -86,6 +86,11 @@ class Plan:
         stages = (self._sprinkle(), self._diagonalise(), self._fit(), [self._aggregate()], [self._figure()])
         return {stage: {job.name: job for job in jobs} for stage, jobs in zip(STAGES, stages, strict=True)}
 
+    def missing(self, folder: Path, stage: str | None = None) -> list[Job]:
+        """Jobs, of one stage or of all, some of whose outputs do not exist in a sweep's folder."""
+        jobs = self.all_jobs if stage is None else self.jobs[stage].values()
+        return [job for job in jobs if not all((folder / output).exists() for output in job.outputs)]
+
     def job(self, stage: str, name: str) -> Job:
         """One job; raises SweepError for a name that the sweep does not have."""
         try:
@@ -107,6 +112,7 @@ class Plan:
                 (),
                 (orders_path(block),),
                 cost.START_SECONDS + len(block.replicates) * cost.sprinkle_seconds(block.point.size),
+                cost.sprinkle_mib(block.point.size),
             )
             for block in self.blocks
         ]
@@ -136,7 +142,9 @@ class Plan:
         request = FitRequest(series, self.sweep.sizes, self.sweep.replicates, self.sweep.windows)
         inputs = [spectra_path(b, series.operator) for size in request.sizes for b in request.blocks(size)]
         outputs = tuple(piece_path(series.name, table) for table in PIECE_TABLES)
-        return Job("fit", series.name, request, tuple(inputs), outputs, cost.FIT_SECONDS)
+        eigenvalues = max(n * r for n, r in zip(request.sizes, request.replicates, strict=True))
+        memory = cost.fit_mib(eigenvalues)
+        return Job("fit", series.name, request, tuple(inputs), outputs, cost.FIT_SECONDS, memory)
 
     def _aggregate(self) -> Job:
         names = tuple(series.name for series in self.series)
