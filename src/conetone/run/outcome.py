@@ -70,28 +70,38 @@ def print_table(outcome: Outcome) -> None:
     if not outcome.exponents:
         return
     notes: dict[str, int] = {}
-    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
-    for header in ("series", "exponent(stat)(sys)", "expected", "sizes", "used/attempted", "notes"):
-        table.add_column(
-            header, no_wrap=header != "series", justify="right" if header == "used/attempted" else "left"
-        )
-    for row in outcome.exponents:
-        marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
-        table.add_row(
-            series_label(row),
-            format_value(row["exponent"], row["statistical"], row["systematic"]),
-            _expected(row),
-            _sizes(row["sizes"]),
-            f"{row['replicates_used']}/{row['replicates_attempted']}",
-            " ".join(f"[{mark}]" for mark in marks),
-        )
-    console.print(table)
+    operators = dict.fromkeys((row["matrix"], row["part"]) for row in outcome.exponents)
+    for matrix, part in operators:
+        rows = [row for row in outcome.exponents if (row["matrix"], row["part"]) == (matrix, part)]
+        console.print(_table(f"{matrix} {part}", rows, notes))
     for note, mark in notes.items():
         console.print(f"[{mark}] {note}")
     console.print(f"\nTables:  {outcome.folder}/{{{','.join(CLOSING_TABLES)}}}.parquet", soft_wrap=True)
     console.print(f"Figures: {outcome.folder / 'figures'}", soft_wrap=True)
     for path in outcome.figures:
         console.print(f"         {path.stem} (.pdf .png .csv)", soft_wrap=True)
+
+
+def _table(title: str, rows: list[dict[str, Any]], notes: dict[str, int]) -> Table:
+    """The rows of one operator; `notes` collects their warnings with a number each."""
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title=title, title_justify="left", title_style="bold")
+    for header in ("series", "exponent(stat)(sys)"):
+        table.add_column(header, no_wrap=True)
+    table.add_column("expected", overflow="fold")  # gives way first on a narrow terminal
+    table.add_column("sizes", no_wrap=True)
+    table.add_column("used/attempted", justify="right")
+    table.add_column("notes")
+    for row in rows:
+        marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
+        table.add_row(
+            ensemble_label(row),
+            format_value(row["exponent"], row["statistical"], row["systematic"]),
+            _expected(row),
+            _sizes(row["sizes"]),
+            f"{row['replicates_used']}/{row['replicates_attempted']}",
+            " ".join(f"[{mark}]" for mark in marks),
+        )
+    return table
 
 
 def print_json(outcome: Outcome) -> None:
@@ -116,11 +126,10 @@ def print_json(outcome: Outcome) -> None:
     )
 
 
-def series_label(row: dict[str, Any]) -> str:
-    """`minkowski-diamond, dimension 3: causal antisymmetric`."""
+def ensemble_label(row: dict[str, Any]) -> str:
+    """`minkowski-diamond, dimension 3`."""
     given = {name: row[name] for name in PARAMETER_NAMES if row[name] is not None}
-    choice = EnsembleChoice(row["ensemble"], tuple(given.items()), row["count"])
-    return f"{choice.label}: {row['matrix']} {row['part']}"
+    return EnsembleChoice(row["ensemble"], tuple(given.items()), row["count"]).label
 
 
 def format_value(value: float | None, statistical: float | None, systematic: float | None) -> str:
@@ -144,7 +153,7 @@ def _expected(row: dict[str, Any]) -> str:
 
 def _sizes(sizes: list[int]) -> str:
     return (
-        f"{sizes[0]} … {sizes[-1]} ({len(sizes)})" if len(sizes) > 1 else ", ".join(map(str, sizes)) or "none"
+        f"{sizes[0]}…{sizes[-1]} ({len(sizes)})" if len(sizes) > 1 else ", ".join(map(str, sizes)) or "none"
     )
 
 

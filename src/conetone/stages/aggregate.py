@@ -83,10 +83,9 @@ def _series_tables(fits: list[dict[str, Any]], settings: ExtrapolationSettings) 
     found = extrapolate(estimates, settings.omegas, settings.most_sizes_cut)
     if found is None:
         averages = measure(average_at_sizes(estimates), replicates)
-        reason = (
-            f"no window and model has a fit at {SMALLEST_NUMBER_OF_SIZES} sizes, the largest among them;"
-            f" {len(series.sizes)} sizes have any"
-        )
+        reason = f"{len(series.sizes)} usable sizes; extrapolation takes {SMALLEST_NUMBER_OF_SIZES}"
+        if len(series.sizes) >= SMALLEST_NUMBER_OF_SIZES:
+            reason = f"no window has fits at {SMALLEST_NUMBER_OF_SIZES} sizes, the largest among them"
         row = _exponent_row(series, settings, None, None, reason)
         return {"fits": [*fits, *_average_rows(series, averages, replicates)], "exponents": [row]}
     omega = settings.omegas[int(found.omega_weights.argmax())]
