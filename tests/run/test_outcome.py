@@ -5,8 +5,10 @@ import sys
 from pathlib import Path
 
 import pytest
+from rich.console import Console
 
 from conetone.errors import LiveRunError
+from conetone.run import outcome
 from conetone.run.lock import run_lock
 from conetone.run.outcome import format_value
 from conetone.run.progress import duration
@@ -26,6 +28,32 @@ from conetone.run.progress import duration
 )
 def test_values_with_their_errors(value, statistical, systematic, text: str) -> None:
     assert format_value(value, statistical, systematic) == text
+
+
+def row(**changes: object) -> dict:
+    return {
+        **{"ensemble": "minkowski-diamond", "count": "fixed", "dimension": 3, "matrix": "causal"},
+        **{"part": "symmetric", "exponent": 0.6912, "statistical": 0.0031, "systematic": 0.0574},
+        **{"expected": 0.75, "expected_standing": "heuristic", "deviation": -1.02, "sizes": [256, 1024]},
+        **{"replicates_used": 120, "replicates_attempted": 121, "replicates_failed": 1, "reason": None},
+        **{"warnings": ["first"], **changes},
+    }
+
+
+@pytest.mark.parametrize("columns", [80, 124, 125, 200])
+def test_the_closing_table_fits_the_terminal_and_loses_nothing(
+    columns: int, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    console = Console(highlight=False, markup=False, width=columns)
+    monkeypatch.setattr(outcome, "plain_console", lambda: console)
+    rows = [row(), row(exponent=None, dimension=None, expected=None, reason="no fit", warnings=["first"])]
+    outcome.print_table(outcome.Outcome("s", Path("/r/s"), rows, [], 9, 9, 0, 1, 3.0))
+    said = capsys.readouterr().out
+    assert max(len(line) for line in said.splitlines() if "Tables:" not in line) <= columns
+    for words in ("minkowski-diamond, dimension 3", "0.691(3)(57)", "0.75 heuristic, -1.0 σ", "256…1024 (2)"):
+        assert words in said
+    for words in ("120/121", "[1] first", "[2] no fit", "none"):
+        assert words in said
 
 
 @pytest.mark.parametrize(

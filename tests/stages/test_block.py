@@ -116,6 +116,25 @@ def test_a_signal_keeps_finished_rows_and_the_next_job_takes_them_up(
     assert not resume_path(SPECTRA).exists()
 
 
+def test_a_second_signal_does_not_cut_the_saving_short(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    write, solve, calls = block.write_table, diagonalise.full_spectrum, iter(range(100))
+
+    def interrupted(matrix, part):
+        if next(calls) == 3:
+            os.kill(os.getpid(), signal.SIGTERM)
+        return solve(matrix, part)
+
+    def disturbed(path, *arguments, **keywords):
+        os.kill(os.getpid(), signal.SIGTERM)
+        write(path, *arguments, **keywords)
+
+    monkeypatch.setattr(diagonalise, "full_spectrum", interrupted)
+    monkeypatch.setattr(block, "write_table", disturbed)
+    with pytest.raises(InterruptedRunError):
+        diagonalise_block(diagonalise_request(), orders, SPECTRA)
+    assert [row["replicate"] for row in read_rows(resume_path(SPECTRA))] == [0, 1, 2]
+
+
 def test_rows_are_put_aside_while_a_block_runs(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(block, "SAVE_SECONDS", 0.0)
     seen = []

@@ -19,6 +19,8 @@ from conetone.sweep.points import EnsembleChoice
 
 # Columns of plain text, where the output is no terminal.
 PLAIN_WIDTH = 150
+# Columns that the closing table takes; narrower terminals get two lines a series.
+TABLE_WIDTH = 125
 
 
 @dataclass(frozen=True)
@@ -73,7 +75,10 @@ def print_table(outcome: Outcome) -> None:
     operators = dict.fromkeys((row["matrix"], row["part"]) for row in outcome.exponents)
     for matrix, part in operators:
         rows = [row for row in outcome.exponents if (row["matrix"], row["part"]) == (matrix, part)]
-        console.print(_table(f"{matrix} {part}", rows, notes))
+        if console.width >= TABLE_WIDTH:
+            console.print(_table(f"{matrix} {part}", rows, notes))
+        else:
+            console.print(_lines(f"{matrix} {part}", rows, notes), soft_wrap=True)
     for note, mark in notes.items():
         console.print(f"[{mark}] {note}")
     console.print(f"\nTables:  {outcome.folder}/{{{','.join(CLOSING_TABLES)}}}.parquet", soft_wrap=True)
@@ -85,23 +90,34 @@ def print_table(outcome: Outcome) -> None:
 def _table(title: str, rows: list[dict[str, Any]], notes: dict[str, int]) -> Table:
     """The rows of one operator; `notes` collects their warnings with a number each."""
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title=title, title_justify="left", title_style="bold")
-    for header in ("series", "exponent(stat)(sys)"):
-        table.add_column(header, no_wrap=True)
-    table.add_column("expected", overflow="fold")  # gives way first on a narrow terminal
-    table.add_column("sizes", no_wrap=True)
-    table.add_column("used/attempted", justify="right")
-    table.add_column("notes")
+    for header in ("series", "exponent(stat)(sys)", "expected", "sizes", "used/attempted", "notes"):
+        table.add_column(header, justify="right" if header == "used/attempted" else "left")
     for row in rows:
-        marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
-        table.add_row(
-            ensemble_label(row),
-            format_value(row["exponent"], row["statistical"], row["systematic"]),
-            _expected(row),
-            _sizes(row["sizes"]),
-            f"{row['replicates_used']}/{row['replicates_attempted']}",
-            " ".join(f"[{mark}]" for mark in marks),
-        )
+        table.add_row(*_cells(row, notes))
     return table
+
+
+def _lines(title: str, rows: list[dict[str, Any]], notes: dict[str, int]) -> str:
+    """The same for a terminal too narrow for the table: two lines a series."""
+    lines = [f"\n{title}"]
+    for row in rows:
+        series, exponent, expected, sizes, replicates, marks = _cells(row, notes)
+        lines.append(f"  {series}")
+        known = f"expected {expected}" if expected else ""
+        lines.append("    " + "  ".join(filter(None, [exponent, known, sizes, replicates, marks])))
+    return "\n".join([*lines, ""])
+
+
+def _cells(row: dict[str, Any], notes: dict[str, int]) -> tuple[str, ...]:
+    marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
+    return (
+        ensemble_label(row),
+        format_value(row["exponent"], row["statistical"], row["systematic"]),
+        _expected(row),
+        _sizes(row["sizes"]),
+        f"{row['replicates_used']}/{row['replicates_attempted']}",
+        " ".join(f"[{mark}]" for mark in marks),
+    )
 
 
 def print_json(outcome: Outcome) -> None:
