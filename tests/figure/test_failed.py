@@ -2,8 +2,7 @@
 
 from pathlib import Path
 
-from conetone.stages.figure import FOLDER
-from conetone.sweep.paths import figure_paths
+from conetone.sweep.paths import FIGURE_FOLDER, figure_paths
 
 from .conftest import LONG
 from .drawing import Drawn, artists, draw, texts
@@ -59,7 +58,7 @@ def test_an_operator_without_series(tmp_path: Path) -> None:
     drawn = draw(tmp_path, make_tables([]), (ANTISYMMETRIC, LINK))
     for path in figure_paths(drawn.operators):
         assert (tmp_path / path).stat().st_size > 0
-    for path in (tmp_path / FOLDER).glob("*.csv"):
+    for path in (tmp_path / FIGURE_FOLDER).glob("*.csv"):
         assert len(path.read_text().splitlines()) == 1
     assert "no series" in written(drawn, "spectra-link-symmetric")
 
