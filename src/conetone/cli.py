@@ -104,7 +104,7 @@ def sprinkle(request: RequestText, output: Output, threads: Threads = 1) -> None
     from conetone.sweep.requests import SprinkleRequest
 
     with _threads(threads):
-        sprinkle_block(SprinkleRequest.parse(request), output)
+        sprinkle_block(SprinkleRequest.parse(request), output, own_process=True)
 
 
 @app.command()
@@ -119,7 +119,7 @@ def diagonalise(
     from conetone.sweep.requests import DiagonaliseRequest
 
     with _threads(threads):
-        diagonalise_block(DiagonaliseRequest.parse(request), orders, output)
+        diagonalise_block(DiagonaliseRequest.parse(request), orders, output, own_process=True)
 
 
 @app.command()

@@ -41,10 +41,13 @@ def snakemake_started_by_hand(folder: Path) -> psutil.Process | None:
 def stop(processes: list[psutil.Process]) -> None:
     """Stop these processes: terminate, wait a little, kill.
 
-    Snakemake hears it first, so that it starts no new job in place of those that end.
+    Snakemake hears it first, so that it starts no new job in place of those that end. The shells around
+    jobs do not hear it: they end with their job, and with its exit code, or else Snakemake would take a job
+    that has just finished for a failed one and delete its output.
     """
     for process in sorted(processes, key=lambda process: not _is_snakemake(process)):
-        _quietly(process.terminate)
+        if not _is_shell(process):
+            _quietly(process.terminate)
     _, stubborn = psutil.wait_procs(processes, timeout=GRACE_SECONDS)
     for process in stubborn:
         _quietly(process.kill)
@@ -56,6 +59,13 @@ def _is_snakemake(process: psutil.Process) -> bool:
         # `python -m snakemake …`, or `python …/bin/snakemake …`
         return any(Path(part).name == "snakemake" for part in process.cmdline()[:3])
     except psutil.Error:
+        return False
+
+
+def _is_shell(process: psutil.Process) -> bool:
+    try:
+        return Path(process.cmdline()[0]).name in ("bash", "sh")
+    except (psutil.Error, IndexError):
         return False
 
 

@@ -33,13 +33,14 @@ def run_block(
     empty: Compute,
     still_valid: Callable[[Row], bool],
     inputs: str = "",
+    own_process: bool = False,
 ) -> None:
     """Fill a block's table, beginning with the rows that an earlier, interrupted job left.
 
     `compute(replicate)` gives the result columns; `empty(replicate)` the key columns with all results
     null, for a replicate that fails. Rows are taken over if they answer the same request, the range of
     replicates aside, and `still_valid(row)`. Raises InterruptedRunError after SIGTERM or SIGINT, with every
-    finished row in the resume folder.
+    finished row in the resume folder. `own_process` says that the process ends with this job.
     """
     waiting = resume_path(output)
     rows = {
@@ -54,7 +55,9 @@ def run_block(
     def save(path: Path) -> None:
         write_table(path, table, [rows[r] for r in sorted(rows)], request=request, inputs=inputs)
 
-    with stop_on_signals():  # around the saving, too: a second signal must not cut it short
+    with stop_on_signals(
+        then_ignore=own_process
+    ):  # around the saving, too: a second signal must not cut it short
         try:
             for replicate in replicates:
                 if replicate in rows:
@@ -65,13 +68,13 @@ def run_block(
                     save(waiting)
                     saved = time.monotonic()
             save(output)
+            waiting.unlink(missing_ok=True)
         except StopRequested as stopped:
             save(waiting)
             log(f"stopped by {stopped}; {len(rows)} of {len(replicates)} replicates are kept")
             raise InterruptedRunError(
                 f"stopped by {stopped}; finished replicates wait in {waiting}"
             ) from None
-    waiting.unlink(missing_ok=True)
 
 
 def _one_row(replicate: int, compute: Compute, empty: Compute) -> dict[str, Any]:

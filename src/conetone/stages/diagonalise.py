@@ -28,8 +28,13 @@ RESULTS = (
 )
 
 
-def diagonalise_block(request: DiagonaliseRequest, orders: Path, output: Path) -> None:
-    """Write the spectra table of one block; raises TableError if an order is not the one its digest names."""
+def diagonalise_block(
+    request: DiagonaliseRequest, orders: Path, output: Path, *, own_process: bool = False
+) -> None:
+    """Write the spectra table of one block; see run_block for interruptions and `own_process`.
+
+    Raises TableError if an order is not the one its digest names.
+    """
     stored = {row["replicate"]: row for row in read_rows(orders)}
     operator = OPERATORS[request.matrix]
 
@@ -79,4 +84,5 @@ def diagonalise_block(request: DiagonaliseRequest, orders: Path, output: Path) -
         empty,
         still_valid=lambda row: row["status"] == "ok" and row["digest"] == stored[row["replicate"]]["digest"],
         inputs=inputs_digest([orders]),
+        own_process=own_process,
     )

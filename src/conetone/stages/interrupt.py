@@ -11,8 +11,12 @@ class StopRequested(BaseException):
 
 
 @contextmanager
-def stop_on_signals() -> Iterator[None]:
-    """Raise StopRequested at the first SIGTERM or SIGINT; further ones change nothing."""
+def stop_on_signals(*, then_ignore: bool) -> Iterator[None]:
+    """Raise StopRequested at the first SIGTERM or SIGINT; further ones change nothing.
+
+    With `then_ignore`, for a process that ends with this block, both stay ignored after success: its work
+    is whole, and its exit code must say so. Otherwise the handlers of before come back.
+    """
 
     def stop(number: int, frame: FrameType | None) -> None:
         for each in previous:
@@ -24,6 +28,8 @@ def stop_on_signals() -> Iterator[None]:
         signal.signal(each, stop)
     try:
         yield
+        if then_ignore:
+            previous = dict.fromkeys(previous, signal.SIG_IGN)
     finally:
         for each, handler in previous.items():
             signal.signal(each, handler)

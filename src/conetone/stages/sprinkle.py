@@ -24,8 +24,8 @@ def draw(point: Point, root_seed: int, replicate: int) -> Order:
     return sprinkle(point.choice.ensemble, dict(point.choice.parameters), elements, generator)
 
 
-def sprinkle_block(request: SprinkleRequest, output: Path) -> None:
-    """Write the orders table of one block."""
+def sprinkle_block(request: SprinkleRequest, output: Path, *, own_process: bool = False) -> None:
+    """Write the orders table of one block; see run_block for interruptions and `own_process`."""
     point = request.point
 
     def empty(replicate: int) -> dict[str, Any]:
@@ -44,7 +44,16 @@ def sprinkle_block(request: SprinkleRequest, output: Path) -> None:
         }
 
     replicates = range(request.first, request.stop)
-    run_block(output, ORDERS, request.text(), replicates, compute, empty, lambda row: row["status"] == "ok")
+    run_block(
+        output,
+        ORDERS,
+        request.text(),
+        replicates,
+        compute,
+        empty,
+        still_valid=lambda row: row["status"] == "ok",
+        own_process=own_process,
+    )
 
 
 def replicate_keys(point: Point, replicate: int) -> dict[str, Any]:
