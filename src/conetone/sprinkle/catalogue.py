@@ -8,7 +8,8 @@ import numpy as np
 
 from conetone.reference.flat import ordering_fraction_of_diamond
 from conetone.sprinkle.layered import kleitman_rothschild
-from conetone.sprinkle.minkowski import minkowski_box, minkowski_diamond
+from conetone.sprinkle.lightcone import Points
+from conetone.sprinkle.minkowski import minkowski_box, minkowski_diamond, order_of_positions
 from conetone.sprinkle.order import Order
 
 Parameters = Mapping[str, int]
@@ -31,6 +32,8 @@ class Ensemble:
     `sampler(elements, generator, **parameters)` draws one order. `region` names the spacetime
     region it is sprinkled into, None where the orders resemble no manifold.
     `ordering_fraction` gives the exact expected ordering fraction of given parameters, where one is known.
+    `from_positions(points)` gives the order of stored points back, shape (n, d), sorted by time; it raises
+    OrderError for any others. None where orders are not made from points.
     """
 
     name: str
@@ -40,6 +43,7 @@ class Ensemble:
     source: str
     region: Literal["diamond", "box"] | None = None
     ordering_fraction: Callable[[Parameters], float] | None = None
+    from_positions: Callable[[Points], Order] | None = None
 
 
 DIMENSION = Parameter("dimension", 2, 7, "spacetime dimension, time included")
@@ -54,6 +58,7 @@ ENSEMBLES: Mapping[str, Ensemble] = {
             "uniform sprinkling into a causal diamond of flat spacetime",
             "Bombelli, Lee, Meyer & Sorkin 1987; ordering fraction: Myrheim 1978, Meyer 1988",
             region="diamond",
+            from_positions=order_of_positions,
             ordering_fraction=lambda parameters: ordering_fraction_of_diamond(parameters["dimension"]),
         ),
         Ensemble(
@@ -63,6 +68,7 @@ ENSEMBLES: Mapping[str, Ensemble] = {
             "uniform sprinkling into a unit hypercube of flat spacetime, time along one edge",
             "Bombelli, Lee, Meyer & Sorkin 1987",
             region="box",
+            from_positions=order_of_positions,
         ),
         Ensemble(
             "kleitman-rothschild",

@@ -1,14 +1,12 @@
 """Sprinklings into regions of flat spacetime: uniform points, related where one can signal the other."""
 
-from collections.abc import Iterator
-
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike
 
+from conetone.sprinkle.dominance import DominanceOrder
+from conetone.sprinkle.lightcone import Points, relation_of_points
 from conetone.sprinkle.order import Order
-from conetone.sprinkle.relation import WORD, Matrix, PackedRelation
-
-Points = NDArray[np.float64]
+from conetone.sprinkle.sprinkling import Sprinkling
 
 
 def minkowski_diamond(elements: int, generator: np.random.Generator, *, dimension: int) -> Order:
@@ -35,22 +33,18 @@ def diamond_points(elements: int, generator: np.random.Generator, dimension: int
     return np.column_stack([times, directions * radii[:, np.newaxis]])
 
 
-def order_of_points(points: Points) -> Order:
+def order_of_points(points: Points, threads: int = 1) -> Sprinkling:
     """The causal order of points of flat spacetime, shape (n, d), time first, unit speed of light.
 
     Element i of the result is the i-th earliest point. i precedes j if t_j − t_i ≥ |x_j − x_i|.
+    `threads` is the number of threads that find relation and links. Raises OrderError as Sprinkling does.
     """
-    points = points[np.argsort(points[:, 0], kind="stable")]
-    return Order(PackedRelation.from_row_groups(len(points), _row_groups(points)))
+    return order_of_positions(points[np.argsort(points[:, 0], kind="stable")], threads)
 
 
-def _row_groups(points: Points) -> Iterator[Matrix]:
-    columns = np.ascontiguousarray(points.T)
-    labels = np.arange(len(points))
-    for start in range(0, len(points), WORD):
-        rows = slice(start, min(start + WORD, len(points)))
-        separation = (columns[0] - columns[0, rows, np.newaxis]) ** 2
-        for position in columns[1:]:
-            separation -= (position - position[rows, np.newaxis]) ** 2
-        # sorting by time made i < j the same as t_i ≤ t_j
-        yield (separation >= 0) & (labels > labels[rows, np.newaxis])
+def order_of_positions(positions: ArrayLike, threads: int = 1) -> Sprinkling:
+    """As `order_of_points`, of points that are sorted by time already; raises OrderError if they are not."""
+    order = Sprinkling(positions, relation_of_points, threads=threads)
+    if order.positions.shape[1] == 2:
+        return DominanceOrder(order.positions, threads=threads)
+    return order

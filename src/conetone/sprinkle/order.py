@@ -1,35 +1,57 @@
 """A finite partial order (causal set): packed relation, natural labelling, links, height, digest."""
 
 import hashlib
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
+from typing import Self
 
 import numpy as np
+from numpy.typing import NDArray
 
-from conetone.sprinkle.relation import WORD, Matrix, PackedRelation
+from conetone.errors import OrderError
+from conetone.sprinkle.bits import (
+    broken_triple_of,
+    elements_between_of,
+    height_of,
+    interval_counts_of,
+    links_of,
+)
+from conetone.sprinkle.relation import Matrix, PackedRelation
 
-# Rows multiplied at once when links are found: enough for BLAS to be busy, little memory.
-LINK_ROWS = 4 * WORD
 
-
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Order:
     """A partial order on the elements 0 … n − 1, naturally labelled: i precedes j only if i < j.
 
-    `relation` is transitive; samplers guarantee it by construction, `is_transitive` checks it.
+    `relation` is transitive; samplers guarantee it by construction, `require_transitive` checks it.
+    `threads` is the number of threads that find the links.
     """
 
     relation: PackedRelation
+    threads: int = field(default=1, kw_only=True)
 
     @classmethod
     def from_matrix(cls, matrix: Matrix) -> "Order":
         """The order of a strictly upper triangular boolean matrix of shape (n, n); see PackedRelation."""
-        return cls(PackedRelation.from_matrix(matrix))
+        return Order(PackedRelation.from_matrix(matrix))
+
+    def __repr__(self) -> str:
+        return f"<{type(self).__name__} of {self.elements} elements>"
 
     @property
     def elements(self) -> int:
         """Number of elements n."""
         return self.relation.elements
+
+    @property
+    def positions(self) -> NDArray[np.float64] | None:
+        """The points an order was made from, shape (n, d), read-only; None if it was made from none."""
+        return None
+
+    @property
+    def positions_digest(self) -> str | None:
+        """SHA-256 of the positions, in hexadecimal; None without positions."""
+        return None
 
     @cached_property
     def relations(self) -> int:
@@ -45,31 +67,38 @@ class Order:
     @cached_property
     def height(self) -> int:
         """Number of elements in the longest chain."""
-        longest = np.ones(self.elements, dtype=np.int64)
-        for start, rows in self.relation.row_groups():
-            for i, row in enumerate(rows, start):
-                # a natural labelling makes longest[i] final before row i is read, so one pass suffices
-                np.maximum(longest, longest[i] + 1, out=longest, where=row)
-        return int(longest.max(initial=0))
+        return height_of(self.relation)
 
     @cached_property
     def links(self) -> PackedRelation:
         """The transitive reduction: related pairs with nothing between them."""
-        return PackedRelation.from_matrix(self.relation.dense(np.bool_) & ~self._has_element_between())
+        return links_of(self.relation, self.threads)
+
+    def interval_counts(self, most: int) -> NDArray[np.int64]:
+        """Numbers of related pairs with exactly m elements between, m = 0 … `most`; shape (most + 1,)."""
+        return interval_counts_of(self.relation, most)
+
+    def elements_between(self) -> NDArray[np.int32]:
+        """Number of elements between, for every related pair, sorted by (i, j); shape (relations,)."""
+        return elements_between_of(self.relation)
 
     @property
     def is_transitive(self) -> bool:
         """Whether i → j → k implies i → k, for every triple."""
-        return not bool((self._has_element_between() & ~self.relation.dense(np.bool_)).any())
+        return broken_triple_of(self.relation) is None
 
-    def _has_element_between(self) -> Matrix:
-        # Counts of elements between two others stay below 2²⁴, where float32 is exact.
-        dense = self.relation.dense(np.float32)
-        between = np.zeros(dense.shape, dtype=bool)
-        for start in range(0, self.elements, LINK_ROWS):
-            rows = dense[start : start + LINK_ROWS, start:]
-            between[start : start + LINK_ROWS, start:] = rows @ dense[start:, start:] > 0
-        return between
+    def require_transitive(self) -> Self:
+        """The order itself; raises OrderError, naming three elements, if the relation is not transitive."""
+        broken = broken_triple_of(self.relation)
+        if broken is not None:
+            i, j, k = broken
+            raise OrderError(
+                "relation",
+                f"{i} before {j} and {j} before {k}, but not {i} before {k}",
+                "only transitive relations",
+                "give every pair that is related, not the links alone",
+            )
+        return self
 
     @cached_property
     def digest(self) -> str:
