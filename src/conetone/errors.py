@@ -45,6 +45,10 @@ class OrderError(InputError):
     """A relation that is no naturally labelled partial order."""
 
 
+class MatrixError(InputError):
+    """A matrix that has no spectrum: not square, not finite."""
+
+
 class LiveRunError(ConetoneError):
     """Another run of the same sweep is alive."""
 
