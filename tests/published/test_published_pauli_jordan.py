@@ -5,6 +5,8 @@ import pytest
 from scipy.optimize import brentq
 
 from conetone.diagonalise.full import full_spectrum
+from conetone.diagonalise.leading import leading_spectrum
+from conetone.operators.catalogue import OPERATORS
 from conetone.operators.causal import causal_matrix
 from conetone.sprinkle.minkowski import minkowski_diamond
 
@@ -57,3 +59,22 @@ def test_leading_singular_values(matrices):
     np.testing.assert_allclose(expected, [0.405285, 0.135095], atol=5e-7)
     error = found.std(axis=0, ddof=1) / np.sqrt(len(found))
     assert (np.abs(found.mean(axis=0) - expected) < 5 * error + FINITE_SIZE).all()
+
+
+def test_the_first_fifty_eigenvalues_of_a_hundred_thousand_elements():
+    elements, ranks = 100_000, 50
+    expected = exact_eigenvalues(ranks)
+    deviations = []
+    for seed in range(3):
+        order = minkowski_diamond(elements, np.random.default_rng(seed), dimension=2)
+        found = leading_spectrum(
+            OPERATORS["causal"].product(order, 1), "antisymmetric", ranks, tolerance=1e-6
+        )
+        assert found.converged
+        assert (found.residual_bounds < 1e-3 * found.eigenvalues[-ranks]).all()
+        deviations.append(found.eigenvalues[::-1][:ranks] / elements / expected - 1)
+    # the sampling error of an eigenvalue relative to itself varies little with rank: pooled over ranks
+    error = np.sqrt(np.var(deviations, axis=0, ddof=1).mean() / len(deviations))
+    assert error < 0.003
+    shift = 1 / (elements * expected)  # an eigenvalue is off by order one, as above
+    assert (np.abs(np.mean(deviations, axis=0)) < 5 * error + shift).all()
