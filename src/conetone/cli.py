@@ -4,6 +4,7 @@ Heavy imports stand inside the commands, so that a job starts only what it needs
 """
 
 import sys
+import warnings
 from contextlib import AbstractContextManager
 from pathlib import Path
 from typing import Annotated
@@ -29,17 +30,27 @@ Results = Annotated[Path, typer.Option(metavar="DIR", help="Folder that holds on
 RequestText = Annotated[
     str, typer.Option("--request", metavar="JSON", help="What to compute, as the workflow writes it.")
 ]
-Threads = Annotated[int, typer.Option(min=1, metavar="N", help="BLAS threads.")]
+Threads = Annotated[int, typer.Option(min=1, metavar="N", help="Threads.")]
 Output = Annotated[Path, typer.Option(metavar="FILE", help="Table to write.")]
 
 
 def main() -> None:
     """Run the command line; errors that we explain become one message and an exit code."""
+    warnings.formatwarning = _one_line
     try:
         app()
     except ConetoneError as error:
         print(f"conetone: {error}", file=sys.stderr)
         sys.exit(error.exit_code)
+
+
+def _one_line(
+    message: Warning | str, category: type[Warning], filename: str, lineno: int, line: str | None = None
+) -> str:
+    """A UserWarning is for the person, who wants no line of source; others are for us."""
+    if category is UserWarning:
+        return f"conetone: {message}\n"
+    return f"{filename}:{lineno}: {category.__name__}: {message}\n"
 
 
 def _version(wanted: bool) -> None:
@@ -77,9 +88,22 @@ def run(
 
     Example: conetone run config/first-look.yaml --cores 2
     """
+    if quiet:
+        warnings.simplefilter("ignore", UserWarning)
     from conetone.run.running import run_sweep
+    from conetone.stages.kernels import compile_all
 
-    sys.exit(run_sweep(sweep, results, cores, snakemake_options=context.args, quiet=quiet, as_json=json))
+    sys.exit(
+        run_sweep(
+            sweep,
+            results,
+            cores,
+            compile_all,
+            snakemake_options=context.args,
+            quiet=quiet,
+            as_json=json,
+        )
+    )
 
 
 @app.command()
@@ -119,7 +143,8 @@ def diagonalise(
     from conetone.sweep.requests import DiagonaliseRequest
 
     with _threads(threads):
-        diagonalise_block(DiagonaliseRequest.parse(request), orders, output, own_process=True)
+        asked = DiagonaliseRequest.parse(request)
+        diagonalise_block(asked, orders, output, threads=threads, own_process=True)
 
 
 @app.command()

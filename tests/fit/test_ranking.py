@@ -52,6 +52,49 @@ def test_ranks_of_an_antisymmetric_part_count_half_its_rank():
             assert 2 * len(magnitudes) == np.linalg.matrix_rank(matrix - matrix.T)
 
 
+def plain_ranks_of_ends(eigenvalues, count):
+    """Magnitudes in falling order, as long as the next one must be among the ends."""
+    falling = sorted(eigenvalues, key=abs, reverse=True)
+    found = []
+    for value in falling:
+        if sum(1 for v in found if v > 0) == count or sum(1 for v in found if v < 0) == count:
+            break  # another one of this sign might come next and be missing
+        found.append(value)
+    return [abs(value) for value in found]
+
+
+def test_the_ends_of_a_symmetric_part_are_ranked_as_far_as_none_is_missing():
+    """What is ranked of the ends is ranked first of the whole spectrum: count magnitudes at least."""
+    generator = np.random.default_rng(5)
+    for _ in range(500):
+        n, count = int(generator.integers(1, 60)), int(generator.integers(1, 12))
+        eigenvalues = np.sort(generator.standard_normal(n) + generator.normal())
+        ends = eigenvalues if n <= 2 * count else np.r_[eigenvalues[:count], eigenvalues[-count:]]
+        found = ranked_magnitudes(ends, "symmetric", count=count)
+        np.testing.assert_array_equal(found, plain_ranks_of_ends(eigenvalues, count))
+        np.testing.assert_array_equal(found, ranked_magnitudes(eigenvalues, "symmetric")[: len(found)])
+        assert len(found) >= min(count, n)
+
+
+def test_the_ends_of_an_antisymmetric_part_are_its_largest_pairs():
+    generator = np.random.default_rng(6)
+    for _ in range(100):
+        pairs, count = int(generator.integers(1, 30)), int(generator.integers(1, 12))
+        positive = np.sort(generator.random(pairs))
+        eigenvalues = np.r_[-positive[::-1], positive]
+        ends = eigenvalues if pairs <= count else np.r_[eigenvalues[:count], eigenvalues[-count:]]
+        found = ranked_magnitudes(ends, "antisymmetric", count=count)
+        np.testing.assert_array_equal(found, positive[::-1][:count])
+
+
+@pytest.mark.parametrize("part", ["symmetric", "antisymmetric"])
+def test_what_is_below_the_tolerance_is_left_out(part):
+    eigenvalues = np.array([-100.0, -2e-7, -0.5e-7, 0.5e-7, 2e-7, 100.0])
+    found = ranked_magnitudes(eigenvalues, part, count=3, tolerance=1e-9)
+    assert found.min() == 2e-7
+    assert len(found) == {"symmetric": 4, "antisymmetric": 2}[part]
+
+
 def test_logs_are_averaged_over_bins():
     generator = np.random.default_rng(1)
     spectra = [np.sort(generator.random(length))[::-1] for length in (20, 25, 31)]

@@ -1,6 +1,7 @@
 """Table files: round trips, damage, atomicity, digests, and how others read them."""
 
 import os
+import tracemalloc
 
 import numpy as np
 import pandas as pd
@@ -13,6 +14,7 @@ from conetone.errors import TableError
 from conetone.operators.causal import causal_matrix
 from conetone.records.files import (
     ROWS_A_GROUP,
+    column_digest,
     content_digest,
     inputs_digest,
     read_footer,
@@ -50,6 +52,7 @@ def order_rows(choice=DIAMOND, size=40, replicates=4):
                 "ordering_fraction": order.ordering_fraction,
                 "digest": order.digest,
                 "packed_relation": order.relation.to_bytes(),
+                "positions": None,
                 "seconds": 0.25 * replicate,
                 "peak_mib": 100.0,
                 "status": "ok",
@@ -69,6 +72,9 @@ def spectrum_rows(choice=DIAMOND, size=40, replicates=4):
                 "matrix": "causal",
                 "part": "antisymmetric",
                 "extent": "full",
+                "leading_count": None,
+                "tolerance": None,
+                "residual_bound": None,
                 "eigenvalues": full_spectrum(causal_matrix(order), "antisymmetric").eigenvalues.tolist(),
                 "elements": order.elements,
                 "ordering_fraction": order.ordering_fraction,
@@ -154,6 +160,43 @@ def test_names_in_the_path_do_not_become_columns(tmp_path):
     path = tmp_path / "size=7" / "o.parquet"
     write_table(path, ORDERS, order_rows(), request="r")
     assert read_rows(path) == order_rows()
+
+
+def test_a_large_relation_takes_little_more_than_its_size_to_hash_and_nothing_to_compare(tmp_path):
+    """A column of bytes is hashed as it lies: its text would take four times the room."""
+    content = np.random.default_rng(1).bytes(20_000_000)
+    rows = [{**order_rows(replicates=1)[0], "packed_relation": content}]
+    write_table(tmp_path / "o.parquet", ORDERS, rows, request="r")
+    column = pq.read_table(tmp_path / "o.parquet", columns=["packed_relation"]).column(0)
+    tracemalloc.start()
+    digest = column_digest(column)
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert peak < 100_000
+    assert digest == read_footer(tmp_path / "o.parquet")["columns"]["packed_relation"]
+    index = pq.read_schema(tmp_path / "o.parquet").names.index("packed_relation")
+    assert pq.read_metadata(tmp_path / "o.parquet").row_group(0).column(index).statistics is None
+    assert read_rows(tmp_path / "o.parquet") == rows
+
+
+def test_bytes_are_told_apart():
+    def digest(values):
+        return column_digest(pa.chunked_array([pa.array(values, type=pa.binary())]))
+
+    different = [
+        [],
+        [None],
+        [b""],
+        [b"null"],
+        [b"a", b"b"],
+        [b"ab"],
+        [b"ab", b""],
+        [b"", b"ab"],
+        [b"ab", None],
+    ]
+    assert len({digest(values) for values in different}) == len(different)
+    chunks = pa.chunked_array([[b"a", None], [b"b"]], type=pa.binary())
+    assert column_digest(chunks) == digest([b"a", None, b"b"])
 
 
 def test_rows_that_do_not_fit_are_refused(tmp_path):

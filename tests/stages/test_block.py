@@ -15,8 +15,10 @@ from conetone.stages.diagonalise import diagonalise_block
 from conetone.stages.sprinkle import sprinkle_block
 from conetone.sweep.points import EnsembleChoice, Point
 from conetone.sweep.requests import DiagonaliseRequest, SprinkleRequest
+from conetone.sweep.settings import SpectrumSettings
 
 POINT = Point(EnsembleChoice("minkowski-diamond", (("dimension", 2),), "fixed"), 40)
+FULL = SpectrumSettings("full", None, None, "auto")
 ORDERS, SPECTRA = Path("orders/block.parquet"), Path("spectra/block.parquet")
 
 
@@ -25,7 +27,7 @@ def sprinkle_request(stop: int = 5) -> SprinkleRequest:
 
 
 def diagonalise_request(stop: int = 5) -> DiagonaliseRequest:
-    return DiagonaliseRequest(POINT, "causal", "symmetric", "full", 0, stop)
+    return DiagonaliseRequest(POINT, "causal", "symmetric", FULL, 0, stop)
 
 
 @pytest.fixture(autouse=True)
@@ -42,10 +44,10 @@ def orders() -> Path:
 def test_a_replicate_that_fails_is_a_row_with_a_reason(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     solve, calls = diagonalise.full_spectrum, iter(range(5))
 
-    def failing(matrix, part):
+    def failing(matrix, part, **options):
         if next(calls) == 2:
             raise np.linalg.LinAlgError("no convergence")
-        return solve(matrix, part)
+        return solve(matrix, part, **options)
 
     monkeypatch.setattr(diagonalise, "full_spectrum", failing)
     diagonalise_block(diagonalise_request(), orders, SPECTRA)
@@ -71,8 +73,8 @@ def test_a_failed_order_fails_its_spectrum(monkeypatch: pytest.MonkeyPatch) -> N
 def test_a_spectrum_that_breaks_a_sum_rule_is_suspect(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     solve = diagonalise.full_spectrum
 
-    def careless(matrix, part):
-        spectrum = solve(matrix, part)
+    def careless(matrix, part, **options):
+        spectrum = solve(matrix, part, **options)
         return type(spectrum)(spectrum.eigenvalues * (1 + 1e-9), spectrum.solver)
 
     monkeypatch.setattr(diagonalise, "full_spectrum", careless)
@@ -83,7 +85,7 @@ def test_a_spectrum_that_breaks_a_sum_rule_is_suspect(orders: Path, monkeypatch:
 
 
 def test_a_bug_fails_the_job_and_writes_nothing(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    def broken(matrix, part):
+    def broken(matrix, part, **options):
         raise ZeroDivisionError
 
     monkeypatch.setattr(diagonalise, "full_spectrum", broken)
@@ -98,10 +100,10 @@ def test_a_signal_keeps_finished_rows_and_the_next_job_takes_them_up(
 ) -> None:
     solve, calls = diagonalise.full_spectrum, iter(range(100))
 
-    def interrupted(matrix, part):
+    def interrupted(matrix, part, **options):
         if next(calls) == 3:
             os.kill(os.getpid(), number)
-        return solve(matrix, part)
+        return solve(matrix, part, **options)
 
     monkeypatch.setattr(diagonalise, "full_spectrum", interrupted)
     with pytest.raises(InterruptedRunError):
@@ -119,10 +121,10 @@ def test_a_signal_keeps_finished_rows_and_the_next_job_takes_them_up(
 def test_a_second_signal_does_not_cut_the_saving_short(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     write, solve, calls = block.write_table, diagonalise.full_spectrum, iter(range(100))
 
-    def interrupted(matrix, part):
+    def interrupted(matrix, part, **options):
         if next(calls) == 3:
             os.kill(os.getpid(), signal.SIGTERM)
-        return solve(matrix, part)
+        return solve(matrix, part, **options)
 
     def disturbed(path, *arguments, **keywords):
         os.kill(os.getpid(), signal.SIGTERM)
@@ -140,10 +142,10 @@ def test_rows_are_put_aside_while_a_block_runs(orders: Path, monkeypatch: pytest
     seen = []
     solve = diagonalise.full_spectrum
 
-    def watching(matrix, part):
+    def watching(matrix, part, **options):
         waiting = resume_path(SPECTRA)
         seen.append(len(read_rows(waiting)) if waiting.exists() else 0)
-        return solve(matrix, part)
+        return solve(matrix, part, **options)
 
     monkeypatch.setattr(diagonalise, "full_spectrum", watching)
     diagonalise_block(diagonalise_request(), orders, SPECTRA)
@@ -205,7 +207,7 @@ def test_an_order_that_is_not_the_one_its_digest_names_is_refused(orders: Path) 
 def test_poisson_counts_scatter_and_an_empty_order_has_an_empty_spectrum() -> None:
     tiny = Point(EnsembleChoice("minkowski-diamond", (("dimension", 2),), "poisson"), 2)
     sprinkle_block(SprinkleRequest(tiny, root_seed=1, first=0, stop=40), ORDERS)
-    diagonalise_block(DiagonaliseRequest(tiny, "causal", "antisymmetric", "full", 0, 40), ORDERS, SPECTRA)
+    diagonalise_block(DiagonaliseRequest(tiny, "causal", "antisymmetric", FULL, 0, 40), ORDERS, SPECTRA)
     orders, spectra = pd.read_parquet(ORDERS), pd.read_parquet(SPECTRA)
     assert orders.elements.min() == 0, "40 draws of mean 2: the chance of no 0 is 0.3 %"
     assert (spectra.status == "ok").all()

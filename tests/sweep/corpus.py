@@ -52,7 +52,7 @@ def complete_sweep() -> dict[str, Any]:
             {"matrix": "causal", "part": ["symmetric", "antisymmetric"]},
             {"matrix": "link", "part": "symmetric"},
         ],
-        "spectrum": {"extent": "full"},
+        "spectrum": {"extent": "auto", "count": 40, "tolerance": 1e-8, "solver": "two-stage"},
         "windows": {
             "from": ["n^0.25", "0.5 * n^0.5"],
             "to": ["n^0.75", "0.25 * n^1"],
@@ -135,6 +135,20 @@ _LOWER_ENDS = st.sampled_from(["n^0.25", "1.5 * n^0.25", "0.25 * n^0.5", "0.4 * 
 _UPPER_ENDS = st.sampled_from(["0.25 * n^0.75", "n^0.75", "0.5 * n^0.8", "0.125 * n^1"])
 
 
+_COUNTS, _TOLERANCES = st.integers(1, 400), st.floats(1e-12, 1e-6)
+_SOLVERS = st.sampled_from(["auto", "two-stage", "lapack"])
+_SPECTRA = (
+    st.fixed_dictionaries({}, optional={"extent": st.just("full"), "solver": _SOLVERS})
+    | st.fixed_dictionaries(
+        {"extent": st.just("leading"), "count": _COUNTS}, optional={"tolerance": _TOLERANCES}
+    )
+    | st.fixed_dictionaries(
+        {"extent": st.just("auto")},
+        optional={"count": _COUNTS, "tolerance": _TOLERANCES, "solver": _SOLVERS},
+    )
+)
+
+
 @st.composite
 def varied_sweeps(draw: st.DrawFn) -> dict[str, Any]:
     """Sweeps whose fields are all within their ranges; about half are valid as a whole."""
@@ -164,7 +178,7 @@ def varied_sweeps(draw: st.DrawFn) -> dict[str, Any]:
             },
             optional={
                 "count": st.sampled_from(["fixed", "poisson"]),
-                "spectrum": st.just({"extent": "full"}) | st.just({}),
+                "spectrum": _SPECTRA,
                 "windows": st.fixed_dictionaries(
                     {},
                     optional={

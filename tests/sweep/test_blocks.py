@@ -4,10 +4,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from conetone.operators.catalogue import PARTS
 from conetone.sweep.blocks import LONGEST_BLOCK, TARGET_SECONDS, block_length, blocks_of
-from conetone.sweep.cost import diagonalise_seconds
-from conetone.sweep.points import EnsembleChoice, OperatorChoice, Point
+from conetone.sweep.cost import LAPACK_SECONDS_AT_1000, full_seconds
+from conetone.sweep.points import EnsembleChoice, Point
 
 DIAMOND = EnsembleChoice("minkowski-diamond", (("dimension", 3),), "fixed")
 LAYERED = EnsembleChoice("kleitman-rothschild", (), "poisson")
@@ -48,8 +47,27 @@ def test_the_length_follows_from_the_size_alone(size):
 @given(sizes)
 def test_no_block_takes_much_longer_than_its_target(size):
     point = Point(DIAMOND, size)
-    slowest = max(diagonalise_seconds(size, OperatorChoice("causal", part)) for part in PARTS)
+    slowest = max(full_seconds(size, part, "lapack") for part in LAPACK_SECONDS_AT_1000)
     assert block_length(point) == 1 or block_length(point) * slowest <= TARGET_SECONDS
+
+
+@pytest.mark.parametrize(
+    ("size", "length"),
+    [
+        (64, 500),
+        (256, 500),
+        (362, 500),
+        (512, 500),
+        (724, 250),
+        (1024, 88),
+        (2048, 11),
+        (4096, 1),
+        (10**6, 1),
+    ],
+)
+def test_lengths_never_change(size, length):
+    """Results that exist have these lengths: with others, every order of such a size would be drawn again."""
+    assert block_length(Point(DIAMOND, size)) == length
 
 
 def test_names_are_unique():

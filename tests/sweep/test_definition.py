@@ -14,11 +14,11 @@ from hypothesis import given, settings
 
 from conetone.errors import SweepError
 from conetone.fit.windows import Growth, WindowRule
-from conetone.sweep.cost import diagonalise_mib
+from conetone.sweep.cost import full_mib
 from conetone.sweep.definition import Sweep, load_sweep, resolve_sweep
 from conetone.sweep.points import EnsembleChoice, OperatorChoice
 from conetone.sweep.reading import LARGEST_FILE, read_yaml
-from conetone.sweep.settings import ExtrapolationSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
 from tests.sweep.corpus import (
     CLONE,
     INVALID,
@@ -41,6 +41,7 @@ DEFAULT_WINDOWS = WindowSettings(
     bins=12,
     models=("power", "top-correction"),
 )
+FULL = SpectrumSettings("full", None, None, "auto")
 DEFAULT_EXTRAPOLATION = ExtrapolationSettings((0.5, 0.75, 1.0), most_sizes_cut=2)
 
 
@@ -64,8 +65,10 @@ def sweep(
     operators: tuple[OperatorChoice, ...],
     windows: WindowSettings = DEFAULT_WINDOWS,
     extrapolation: ExtrapolationSettings = DEFAULT_EXTRAPOLATION,
+    spectrum: SpectrumSettings = FULL,
 ) -> Sweep:
-    return Sweep(name, root_seed, choices, sizes, replicates, operators, "full", windows, extrapolation)
+    spectra = (spectrum,) * len(sizes)
+    return Sweep(name, root_seed, choices, sizes, replicates, operators, spectra, windows, extrapolation)
 
 
 MINIMAL = sweep("a", 0, (LAYERED,), (64, 96, 128), (2, 2, 2), (CAUSAL_SYMMETRIC,))
@@ -141,6 +144,18 @@ RESOLVED = {
     "byte-order-mark-and-carriage-returns": sweep(
         "from-another-system", 0, (LAYERED,), (64, 96, 128), (2, 2, 2), (CAUSAL_SYMMETRIC,)
     ),
+    "leading-spectra": sweep(
+        "leading", 1, (diamond(2),), (512, 724, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        spectrum=SpectrumSettings("leading", 63, 1e-9, "auto"),
+    ),
+    "leading-with-tolerance": sweep(
+        "leading-tolerance", 1, (diamond(2),), (256, 512, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        spectrum=SpectrumSettings("leading", 100, 1e-10, "auto"),
+    ),
+    "full-by-lapack": sweep(
+        "full-by-lapack", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        spectrum=SpectrumSettings("full", None, None, "lapack"),
+    ),
     "one-size": sweep("one-size", 1, (diamond(2),), (1000,), (50,), (CAUSAL_ANTISYMMETRIC,)),
 }  # fmt: skip
 
@@ -173,6 +188,8 @@ def test_valid_files_resolve(path: Path) -> None:
     # jobs receive the settings as JSON, window ends as text
     assert WindowSettings.from_json(resolved.windows.as_json()) == resolved.windows
     assert ExtrapolationSettings.from_json(resolved.extrapolation.as_json()) == resolved.extrapolation
+    assert len(resolved.spectra) == len(resolved.sizes)
+    assert all(SpectrumSettings.from_json(s.as_json()) == s and s.why for s in resolved.spectra)
 
 
 @pytest.mark.parametrize("stem", RESOLVED)
@@ -229,6 +246,13 @@ def test_invalid_files_are_refused_with_place_found_and_allowed(path: Path) -> N
         ("sizes-whole-with-point", "write 128"),
         ("omegas-read-as-text", "write 1.0e-3"),
         ("omegas-text", ""),
+        ("full-with-leading-count", "remove it, or write extent: leading"),
+        ("leading-with-solver", "remove it: solvers are for full spectra"),
+        ("leading-without-count", "add this field, or write extent: auto"),
+        ("leading-count-below-windows", "end the windows earlier, or ask for more"),
+        ("leading-count-null", "leave the field out for its default"),
+        ("tolerance-read-as-text", "write 1.0e-9"),
+        ("solver-misspelt", "did you mean two-stage?"),
         ("window-end-python-power", "write n^0.5"),
         ("window-end-no-spaces", "write 0.5 * n^0.5"),
         ("window-end-sum", ""),
@@ -281,14 +305,16 @@ def test_the_place_begins_with_the_file(tmp_path: Path) -> None:
         assert str(caught.value).startswith(f"{place}: found ")
 
 
-@pytest.mark.parametrize("largest", [2, 255, 1000, 1001, 20_000, 1_000_000])
+@pytest.mark.parametrize("solver", ["auto", "two-stage", "lapack"])
+@pytest.mark.parametrize("largest", [2, 150, 255, 1000, 1001, 20_000, 1_000_000])
 def test_the_largest_size_is_the_one_that_fits_into_memory(
-    monkeypatch: pytest.MonkeyPatch, largest: int
+    monkeypatch: pytest.MonkeyPatch, largest: int, solver: str
 ) -> None:
-    available = diagonalise_mib(largest) + 1e-6
-    monkeypatch.setattr("conetone.sweep.definition.memory_of_this_machine_mib", lambda: available)
+    available = full_mib(largest, solver) + 1e-6
+    monkeypatch.setattr("conetone.sweep.memory.memory_of_this_machine_mib", lambda: available)
     values = complete_sweep()
-    values.update(sizes=[largest], replicates=3)
+    values.update(sizes=[largest], replicates=3, spectrum={"solver": solver})
+    values["ensembles"].pop()  # an order without positions cannot have a million elements
     del values["windows"]
     assert resolve_sweep(values).sizes == (largest,)
     values["sizes"] = [largest, largest + 1]
@@ -296,6 +322,68 @@ def test_the_largest_size_is_the_one_that_fits_into_memory(
     assert error.place == "sizes[1]"
     assert f"{largest + 1}, whose full spectrum needs" in error.found
     assert f"up to {largest} on this machine" in error.allowed
+    assert error.advice == "spectrum.extent: leading needs less"
+
+
+def test_leading_spectra_fit_where_full_ones_do_not(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("conetone.sweep.memory.memory_of_this_machine_mib", lambda: 24 * 1024.0)
+    values = complete_sweep()
+    values.update(sizes=100_000, replicates=3)
+    del values["windows"]
+    values["ensembles"] = [{"ensemble": "minkowski-diamond", "dimension": [2, 4]}]
+    values["spectrum"] = {"extent": "auto"}
+    (spectrum,) = resolve_sweep(values).spectra
+    assert (spectrum.extent, spectrum.tolerance) == ("leading", 1e-9)
+    # 0.35 n^0.75 = 1968.2 with its end excluded, 1/16 more, in eights
+    assert spectrum.count == 2096
+    values["spectrum"] = {"extent": "full"}
+    assert "whose full spectrum needs 74" in fault_of(values).found
+    # fewer than 80,096 elements: a full computation, of which the ends are kept
+    values["spectrum"] = {"extent": "leading", "count": 10_000}
+    values["sizes"] = 79_999
+    assert "whose leading spectrum of 10000 eigenvalues of each sign needs 47" in fault_of(values).found
+
+
+def test_auto_takes_the_quicker_one_that_the_windows_allow() -> None:
+    values = complete_sweep()
+    values.update(sizes=[64, 512, 2048, 8192], replicates=1, windows={"to": "0.5 * n^0.5"})
+    values["spectrum"] = {"extent": "auto", "solver": "two-stage", "tolerance": 1e-8}
+    small, *_, large = resolve_sweep(values).spectra
+    assert small == SpectrumSettings("full", None, None, "two-stage")
+    assert large == SpectrumSettings("leading", 48, 1e-8, "auto")  # 45.3: 45 ranks, 47.8 with the margin
+    values["windows"] = {"to": "0.5 * n^1"}
+    *_, large = resolve_sweep(values).spectra
+    assert large == SpectrumSettings("full", None, None, "two-stage")
+    assert large.why == "4352 of each sign are too many: they take 34912 elements"
+    values["windows"] = {"to": "0.5 * n^0.5"}
+    values["spectrum"]["count"] = 44
+    *_, large = resolve_sweep(values).spectra
+    assert large.why == "the windows take 45 ranks, leading ones are 44"
+    values["spectrum"]["count"] = 45
+    *_, large = resolve_sweep(values).spectra
+    assert large == SpectrumSettings("leading", 45, 1e-8, "auto")
+
+
+def test_auto_does_not_depend_on_other_sizes_nor_on_this_machine(monkeypatch: pytest.MonkeyPatch) -> None:
+    values = complete_sweep()
+    values.update(sizes=[256, 1024, 4096], replicates=1, spectrum={"extent": "auto"})
+    del values["windows"]
+    before = resolve_sweep(values).spectra
+    monkeypatch.setattr("conetone.sweep.memory.memory_of_this_machine_mib", lambda: 1e9)
+    values["sizes"] = [128, 256, 1024, 2048, 4096, 8192]
+    _, first, second, _, third, _ = resolve_sweep(values).spectra
+    assert (first, second, third) == before
+
+
+def test_a_leading_count_gives_at_least_the_ranks_of_the_widest_window() -> None:
+    """The fit takes a window whose end, exclusive, is at most one above the ranks that there are."""
+    values = complete_sweep()
+    values["sizes"] = [100, 1000, 10_000]
+    values["windows"] = {"to": ["0.6 * n^0.5", "0.3 * n^0.75", "0.01 * n^1"]}
+    for count in range(280, 310):
+        values["spectrum"] = {"extent": "leading", "count": count}
+        fits = max(Growth.parse(end).at(10_000) for end in values["windows"]["to"]) <= count + 1
+        assert isinstance(outcome(values), Sweep) is fits
 
 
 # What Snakemake may pass on from a file that it read itself, without our strict reading.
@@ -359,7 +447,7 @@ def test_a_sweep_expands_into_every_combination_of_its_values(values: dict[str, 
     resolved = outcome(values)
     if isinstance(resolved, SweepError):
         repeated = len(set(choices)) < len(choices) or len(set(operators)) < len(operators)
-        assert repeated or resolved.place.startswith("windows.")
+        assert repeated or resolved.place.startswith("windows.") or resolved.place == "spectrum.count"
         return
     sizes = as_list(values["sizes"])
     assert resolved.choices == tuple(choices)
@@ -372,6 +460,17 @@ def test_a_sweep_expands_into_every_combination_of_its_values(values: dict[str, 
     lows = [Growth.parse(text) for text in as_list(windows["from"])] if "from" in windows else [LOW, MIDDLE]
     highs = [Growth.parse(text) for text in as_list(windows["to"])] if "to" in windows else [HIGH, HIGHER]
     assert resolved.windows.rules == tuple(WindowRule(*ends) for ends in product(lows, highs))
+    spectrum = values.get("spectrum", {})
+    extent = spectrum.get("extent", "full")
+    assert {s.extent for s in resolved.spectra} <= ({"full", "leading"} if extent == "auto" else {extent})
+    for size, found in zip(sizes, resolved.spectra, strict=True):
+        if found.extent == "leading":
+            assert found.count == spectrum.get("count", found.count)
+            assert found.tolerance == spectrum.get("tolerance", 1e-9)
+            ends = [high.at(size) for high in highs]
+            assert max(ends) <= found.count + 1
+        else:
+            assert found.solver == spectrum.get("solver", "auto")
     assert resolved.extrapolation.omegas == tuple(
         as_list(values.get("extrapolation", {}).get("omegas", [0.5, 0.75, 1.0]))
     )

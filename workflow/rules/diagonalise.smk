@@ -11,7 +11,7 @@ rule diagonalise:
         request=lambda w: plan.job("diagonalise", f"{w.block}.{w.operator}").request.text(),
     resources:
         mem_mb=lambda w: plan.job("diagonalise", f"{w.block}.{w.operator}").memory_mb,
-    threads: 1
+    threads: lambda w: plan.job("diagonalise", f"{w.block}.{w.operator}").threads
     shell:
         "conetone diagonalise --request {params.request:q}"
         " --orders {input:q} --output {output:q} --threads {threads} 2>> {log:q}"

@@ -11,16 +11,33 @@ from conetone.operators.catalogue import Part
 Floats = NDArray[np.float64]
 
 
-def ranked_magnitudes(eigenvalues: Floats, part: Part) -> Floats:
+def ranked_magnitudes(
+    eigenvalues: Floats, part: Part, *, count: int | None = None, tolerance: float = 0.0
+) -> Floats:
     """Magnitudes in falling order, rank 1 first.
 
     Of an antisymmetric part, whose spectrum is ±, the positive eigenvalues; of a symmetric part all
-    magnitudes. Values that are zero to rounding, below n ε times the largest, are left out.
+    magnitudes. Values that are zero to rounding, below n ε times the largest, or not above `tolerance` times
+    the largest, are left out.
+
+    With `count`, the eigenvalues are only the `count` largest of each sign. Magnitudes are then ranked as far
+    as none can be missing: down to the smallest of each sign that has `count` of them.
     """
-    magnitudes = eigenvalues[eigenvalues > 0] if part == "antisymmetric" else np.abs(eigenvalues)
-    magnitudes = np.sort(magnitudes)[::-1]
-    rounding = len(eigenvalues) * np.finfo(np.float64).eps * magnitudes[:1].sum()
-    return np.asarray(magnitudes[magnitudes > rounding])
+    positive = np.sort(eigenvalues[eigenvalues > 0])[::-1]
+    negative = np.sort(-eigenvalues[eigenvalues < 0])[::-1]
+    if part == "antisymmetric":
+        magnitudes = positive[:count]
+    else:
+        complete = max(_smallest_known(positive, count), _smallest_known(negative, count))
+        magnitudes = np.sort(np.concatenate([positive, negative]))[::-1]
+        magnitudes = magnitudes[magnitudes >= complete]
+    level = max(len(eigenvalues) * np.finfo(np.float64).eps, tolerance) * magnitudes[:1].sum()
+    return np.asarray(magnitudes[magnitudes > level])
+
+
+def _smallest_known(falling: Floats, count: int | None) -> float:
+    """Down to where one sign is complete: of a sign with fewer than `count` values there are no others."""
+    return 0.0 if count is None or len(falling) < count else float(falling[count - 1])
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,11 @@ from conetone.errors import TableError
 from conetone.sprinkle.catalogue import PARAMETER_NAMES
 
 # Part of every job's request: a new version makes old tables stale.
-VERSION = 1
+VERSION = 2
+
+# Larger orders that are made of positions are stored as positions; their packed relations would take n²/16
+# bytes, 25 MB at this size, and their links n³ steps.
+LARGEST_PACKED = 20_000
 
 Row = Mapping[str, Any]
 
@@ -117,12 +121,26 @@ ORDERS = Table(
         *REPLICATE_KEYS,
         Column("elements", COUNT, "number of elements", "elements", nullable=True),
         Column("relations", COUNT, "number of related pairs", nullable=True),
-        Column("links", COUNT, "number of related pairs with nothing between", nullable=True),
+        Column(
+            "links",
+            COUNT,
+            f"number of related pairs with nothing between, null above {LARGEST_PACKED} elements",
+            nullable=True,
+        ),
         Column("height", COUNT, "elements in the longest chain", "elements", nullable=True),
         Column("ordering_fraction", REAL, "related pairs over all pairs", nullable=True),
-        Column("digest", TEXT, "SHA-256 of the packed relation", nullable=True),
+        Column("digest", TEXT, "SHA-256 of the packed relation or of the positions stored", nullable=True),
         Column(
-            "packed_relation", pa.binary(), "upper triangle, one bit a pair, 64 rows a group", nullable=True
+            "packed_relation",
+            pa.binary(),
+            "upper triangle, one bit a pair, 64 rows a group; null where positions are stored",
+            nullable=True,
+        ),
+        Column(
+            "positions",
+            REALS,
+            f"of orders made of positions, above {LARGEST_PACKED} elements: element by element, time first",
+            nullable=True,
         ),
         *COSTS,
         *STATUS,
@@ -134,8 +152,16 @@ SPECTRA = Table(
     (
         *REPLICATE_KEYS,
         *OPERATOR_KEYS,
-        Column("extent", TEXT, "full: every eigenvalue"),
+        Column("extent", TEXT, "full: every eigenvalue; leading: the largest of each sign"),
+        Column("leading_count", COUNT, "eigenvalues of each sign asked for, null if full", nullable=True),
+        Column("tolerance", REAL, "residuals allowed, relative to ‖A‖, null if full", nullable=True),
         Column("eigenvalues", REALS, "eigenvalues, ascending", nullable=True),
+        Column(
+            "residual_bound",
+            REALS,
+            "|error| of each eigenvalue is at most this; null where sum rules audit a full computation",
+            nullable=True,
+        ),
         Column("elements", COUNT, "number of elements", "elements", nullable=True),
         Column("ordering_fraction", REAL, "related pairs over all pairs", nullable=True),
         Column("digest", TEXT, "digest of the order", nullable=True),

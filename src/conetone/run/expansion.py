@@ -36,6 +36,10 @@ def _print_json(plan: Plan, folder: Path) -> None:
             }
             for point, replicates in plan.points
         ],
+        "spectra": [
+            {"size": size, **spectrum.as_json(), "why": spectrum.why}
+            for size, spectrum in plan.spectra.items()
+        ],
         "series": [{"series": series.name, **series.as_json()} for series in plan.series],
         "jobs": {
             stage: {
@@ -63,6 +67,13 @@ def _print_text(plan: Plan, folder: Path) -> None:
         blocks = len(list(blocks_of(point, replicates)))
         points.add_row(point.choice.label, str(point.size), str(replicates), str(blocks))
     console.print(points)
+    spectra = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="Spectra", title_justify="left")
+    for header in ("size", "extent", "of each sign", "why"):
+        spectra.add_column(header, justify="right" if header in ("size", "of each sign") else "left")
+    for size, spectrum in plan.spectra.items():
+        count = "all" if spectrum.count is None else str(spectrum.count)
+        spectra.add_row(str(size), spectrum.extent, count, spectrum.why)
+    console.print(spectra)
     series = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="Series", title_justify="left")
     for header in ("ensemble", "matrix", "part"):
         series.add_column(header)

@@ -5,7 +5,7 @@ import shutil
 import signal
 import sys
 import time
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from types import FrameType
@@ -14,6 +14,7 @@ from rich.console import Console
 
 from conetone.errors import InterruptedRunError, RunFailedError
 from conetone.records.files import RESUME_FOLDER
+from conetone.run.compiling import show_compiling
 from conetone.run.engine import Engine, RunningEngine
 from conetone.run.growth import follow_the_sweep
 from conetone.run.lock import run_lock
@@ -24,6 +25,9 @@ from conetone.run.recovery import recover
 from conetone.sweep.definition import load_sweep
 from conetone.sweep.plan import Plan
 
+# Compiles kernels; yields (name of the next one, its number from 0, number of all) before each.
+Compile = Callable[[], Iterator[tuple[str, int, int]]]
+
 POLL_SECONDS = 0.1
 # Lines of a failed job's log, or of Snakemake's, that go into the message.
 TAIL = 5
@@ -33,6 +37,7 @@ def run_sweep(
     sweep_file: Path,
     results: Path,
     cores: int | None,
+    compile_kernels: Compile,
     *,
     snakemake_options: Sequence[str] = (),
     quiet: bool = False,
@@ -40,6 +45,7 @@ def run_sweep(
 ) -> int:
     """Compute what is missing of a sweep; returns the exit code: 0 done, 1 some replicates failed.
 
+    Kernels are compiled before jobs that need them start, so that not every one of them does it.
     Raises SweepError for a faulty sweep file and LiveRunError beside a live run (both exit code 2, nothing
     written), RunFailedError if jobs failed, InterruptedRunError after SIGINT, SIGTERM or SIGHUP.
     """
@@ -56,6 +62,9 @@ def run_sweep(
             for note in notes:
                 print(f"{plan.sweep.name}: {note}", file=sys.stderr, flush=True)
         tally = Tally(plan, folder, engine.cores)
+        if plan.missing(folder, "sprinkle") or plan.missing(folder, "diagonalise"):
+            with _interruptions_explained():
+                show_compiling(compile_kernels(), quiet=quiet)
         _work(engine, tally, _display(quiet))
         if not plan.missing(folder):
             # rows that no job asked for: with options that stop early, jobs may still come for theirs
@@ -95,9 +104,7 @@ def _work(engine: Engine, tally: Tally, display: Display) -> None:
         stop(processes_of(engine.folder))
         if running:
             running.process.wait()
-        raise InterruptedRunError(
-            "interrupted; everything finished is kept: the same command goes on from here"
-        ) from None
+        raise _interrupted() from None
     finally:
         display.close()
         if running:
@@ -105,6 +112,19 @@ def _work(engine: Engine, tally: Tally, display: Display) -> None:
     if running.process.returncode:
         stop(processes_of(engine.folder))  # jobs that outlived a killed Snakemake
         raise _failure(engine, running, tally)
+
+
+def _interrupted() -> InterruptedRunError:
+    return InterruptedRunError("interrupted; everything finished is kept: the same command goes on from here")
+
+
+@contextmanager
+def _interruptions_explained() -> Iterator[None]:
+    try:
+        with _signals_as_interrupts():
+            yield
+    except KeyboardInterrupt:
+        raise _interrupted() from None
 
 
 def _follow(running: RunningEngine, tally: Tally) -> None:

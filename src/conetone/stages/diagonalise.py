@@ -3,21 +3,25 @@
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from conetone.diagonalise.audit import audit
 from conetone.diagonalise.full import full_spectrum
-from conetone.errors import TableError
+from conetone.diagonalise.leading import LeadingSpectrum, leading_spectrum
 from conetone.operators.catalogue import OPERATORS
 from conetone.records.files import inputs_digest, read_rows
 from conetone.records.provenance import blas_threads
 from conetone.records.tables import SPECTRA
 from conetone.sprinkle.order import Order
-from conetone.sprinkle.relation import PackedRelation
 from conetone.stages.block import run_block
+from conetone.stages.orders import order_of
 from conetone.stages.sprinkle import replicate_keys
 from conetone.sweep.requests import DiagonaliseRequest
 
 RESULTS = (
     "eigenvalues",
+    "residual_bound",
     "elements",
     "ordering_fraction",
     "digest",
@@ -29,21 +33,22 @@ RESULTS = (
 
 
 def diagonalise_block(
-    request: DiagonaliseRequest, orders: Path, output: Path, *, own_process: bool = False
+    request: DiagonaliseRequest, orders: Path, output: Path, *, threads: int = 1, own_process: bool = False
 ) -> None:
     """Write the spectra table of one block; see run_block for interruptions and `own_process`.
 
     Raises TableError if an order is not the one its digest names.
     """
     stored = {row["replicate"]: row for row in read_rows(orders)}
-    operator = OPERATORS[request.matrix]
 
     def empty(replicate: int) -> dict[str, Any]:
         return {
             **replicate_keys(request.point, replicate),
             "matrix": request.matrix,
             "part": request.part,
-            "extent": request.extent,
+            "extent": request.spectrum.extent,
+            "leading_count": request.spectrum.count,
+            "tolerance": request.spectrum.tolerance,
             "threads": blas_threads(),
             **dict.fromkeys(RESULTS),
         }
@@ -52,28 +57,10 @@ def diagonalise_block(
         row = stored[replicate]
         if row["status"] != "ok":
             return {"status": "failed", "reason": f"no order: {row['reason']}"}
-        order = Order(PackedRelation.from_bytes(row["elements"], row["packed_relation"]))
-        if order.digest != row["digest"]:
-            raise TableError(
-                f"{orders}, replicate {replicate}",
-                f"digest {order.digest}",
-                row["digest"],
-                "delete this file",
-            )
-        spectrum = full_spectrum(operator.matrix(order), request.part)
-        checks = audit(spectrum.eigenvalues, request.part, operator.square_sum(order))
-        return {
-            "eigenvalues": spectrum.eigenvalues,
-            "elements": order.elements,
-            "ordering_fraction": row["ordering_fraction"],
-            "digest": row["digest"],
-            "sum_defect": checks.sum_defect,
-            "square_sum_defect": checks.square_sum_defect,
-            "pairing_defect": checks.pairing_defect,
-            "solver": spectrum.solver,
-            "status": "ok" if checks.passed else "suspect",
-            "reason": None if checks.passed else f"a sum rule fails by more than {checks.tolerance:.1e}",
-        }
+        order = order_of(row, f"{orders}, replicate {replicate}")
+        found = {name: row[name] for name in ("elements", "ordering_fraction", "digest")}
+        whole = request.spectrum.takes_all(order.elements)
+        return {**found, **(_full(request, order) if whole else _leading(request, order, threads))}
 
     run_block(
         output,
@@ -85,4 +72,52 @@ def diagonalise_block(
         still_valid=lambda row: row["status"] == "ok" and row["digest"] == stored[row["replicate"]]["digest"],
         inputs=inputs_digest([orders]),
         own_process=own_process,
+    )
+
+
+def _full(request: DiagonaliseRequest, order: Order) -> dict[str, Any]:
+    """Columns of a full computation, audited by sum rules; of its eigenvalues perhaps only the ends."""
+    operator, count = OPERATORS[request.matrix], request.spectrum.count
+    solver = request.spectrum.solver
+    spectrum = full_spectrum(operator.matrix(order), request.part, solver=solver, overwrite=True)
+    checks = audit(spectrum.eigenvalues, request.part, operator.square_sum(order))
+    return {
+        "eigenvalues": spectrum.eigenvalues if count is None else ends(spectrum.eigenvalues, count),
+        "sum_defect": checks.sum_defect,
+        "square_sum_defect": checks.square_sum_defect,
+        "pairing_defect": checks.pairing_defect,
+        "solver": spectrum.solver if count is None else f"{spectrum.solver}, ends kept",
+        "status": "ok" if checks.passed else "suspect",
+        "reason": None if checks.passed else f"a sum rule fails by more than {checks.tolerance:.1e}",
+    }
+
+
+def ends(eigenvalues: NDArray[np.float64], count: int) -> NDArray[np.float64]:
+    """The `count` first and the `count` last of ascending eigenvalues; all, if they are no more."""
+    if len(eigenvalues) <= 2 * count:
+        return eigenvalues
+    return np.concatenate([eigenvalues[:count], eigenvalues[-count:]])
+
+
+def _leading(request: DiagonaliseRequest, order: Order, threads: int) -> dict[str, Any]:
+    """Columns of a leading spectrum, audited by its residuals."""
+    count, tolerance = request.spectrum.count, request.spectrum.tolerance
+    assert count is not None
+    assert tolerance is not None
+    product = OPERATORS[request.matrix].product(order, threads)
+    found = leading_spectrum(product, request.part, count, tolerance=tolerance)
+    return {
+        "eigenvalues": found.eigenvalues,
+        "residual_bound": found.residual_bounds,
+        "solver": found.solver,
+        "status": "ok" if found.converged else "suspect",
+        "reason": None if found.converged else _too_large(found, tolerance),
+    }
+
+
+def _too_large(found: LeadingSpectrum, tolerance: float) -> str:
+    bounds = found.residual_bounds / (found.norm or 1.0)
+    return (
+        f"{(bounds > tolerance).sum()} of {len(bounds)} eigenvalues above the tolerance {tolerance:.1e}:"
+        f" largest bound {bounds.max(initial=0.0):.1e} of the norm"
     )

@@ -23,7 +23,14 @@ from conetone.sweep.requests import FitRequest
 # Bins of a whole spectrum for display.
 PROFILE_BINS = 36
 SMALLEST_NUMBER_OF_BINS = 4
-SPECTRA_COLUMNS = ["replicate", "eigenvalues", "ordering_fraction", "status"]
+SPECTRA_COLUMNS = [
+    "replicate",
+    "leading_count",
+    "tolerance",
+    "eigenvalues",
+    "ordering_fraction",
+    "status",
+]
 
 
 def fit_series(request: FitRequest) -> None:
@@ -55,7 +62,15 @@ class _Usable:
 
 def _usable(request: FitRequest, rows: list[dict[str, Any]]) -> _Usable:
     good = [row for row in rows if row["status"] == "ok"]
-    ranked = [ranked_magnitudes(np.array(r["eigenvalues"]), request.series.operator.part) for r in good]
+    ranked = [
+        ranked_magnitudes(
+            np.array(row["eigenvalues"]),
+            request.series.operator.part,
+            count=row["leading_count"],
+            tolerance=row["tolerance"] or 0.0,
+        )
+        for row in good
+    ]
     kept = [(row, magnitudes) for row, magnitudes in zip(good, ranked, strict=True) if len(magnitudes)]
     return _Usable(
         [row["replicate"] for row, _ in kept],

@@ -7,11 +7,10 @@ from conetone.records.tables import ORDERS
 from conetone.sprinkle.catalogue import PARAMETER_NAMES, sprinkle
 from conetone.sprinkle.order import Order
 from conetone.stages.block import run_block
+from conetone.stages.orders import ORDER_COLUMNS, columns_of
 from conetone.sweep.points import Point
 from conetone.sweep.requests import SprinkleRequest
 from conetone.sweep.seeds import Purpose, generator_for
-
-RESULTS = ("elements", "relations", "links", "height", "ordering_fraction", "digest", "packed_relation")
 
 
 def draw(point: Point, root_seed: int, replicate: int) -> Order:
@@ -29,19 +28,10 @@ def sprinkle_block(request: SprinkleRequest, output: Path, *, own_process: bool 
     point = request.point
 
     def empty(replicate: int) -> dict[str, Any]:
-        return {**replicate_keys(point, replicate), **dict.fromkeys(RESULTS)}
+        return {**replicate_keys(point, replicate), **dict.fromkeys(ORDER_COLUMNS)}
 
     def compute(replicate: int) -> dict[str, Any]:
-        order = draw(point, request.root_seed, replicate)
-        return {
-            "elements": order.elements,
-            "relations": order.relations,
-            "links": order.links.pairs,
-            "height": order.height,
-            "ordering_fraction": order.ordering_fraction if order.elements > 1 else None,
-            "digest": order.digest,
-            "packed_relation": order.relation.to_bytes(),
-        }
+        return columns_of(draw(point, request.root_seed, replicate))
 
     replicates = range(request.first, request.stop)
     run_block(

@@ -6,13 +6,14 @@ The length of a block follows from the size alone, so that a sweep that grows ke
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from conetone.operators.catalogue import PARTS
-from conetone.sweep.cost import diagonalise_seconds
-from conetone.sweep.points import OperatorChoice, Point
+from conetone.sweep.points import Point
 
 # Short enough that two cores stay busy, long enough that starting Python does not matter.
 TARGET_SECONDS = 20.0
 LONGEST_BLOCK = 500
+# A replicate of n = 1000, seconds, growing as n³: of the slowest solver that ever was. Faster ones must not
+# change it, nor what is computed of the spectra: blocks of another length would draw their orders again.
+SECONDS_AT_1000 = 0.21
 
 
 @dataclass(frozen=True)
@@ -37,7 +38,7 @@ class Block:
 
 def block_length(point: Point) -> int:
     """Replicates that one job computes at a point."""
-    slowest = max(diagonalise_seconds(point.size, OperatorChoice("causal", part)) for part in PARTS)
+    slowest = SECONDS_AT_1000 * float(point.size / 1000) ** 3
     return max(1, min(LONGEST_BLOCK, int(TARGET_SECONDS / slowest)))
 
 

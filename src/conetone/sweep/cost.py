@@ -1,49 +1,127 @@
-"""Seconds and memory of one replicate, from its size: for block lengths, forecasts and the memory check.
+"""Seconds and memory of one replicate, from its size: for forecasts, `extent: auto` and the memory check.
 
-Constants measured on one core at n = 1024; they set job lengths and time forecasts,
-never a number in a table.
+Constants are of one core; they never enter a number in a table.
 """
+
+from collections.abc import Callable
+from math import log2
 
 import psutil
 
-from conetone.sweep.points import OperatorChoice
+from conetone.operators.catalogue import DOMINANCE_ABOVE
+from conetone.records.tables import LARGEST_PACKED
+from conetone.sprinkle.catalogue import ENSEMBLES
+from conetone.sweep.points import OperatorChoice, Point
+from conetone.sweep.settings import SpectrumSettings
 
 MIB = 2**20
 
 # One eigenproblem of n = 1000 through LAPACK, seconds.
-SECONDS_AT_1000 = {"symmetric": 0.11, "antisymmetric": 0.21}
-# Sprinkling, links and height of n = 1000, seconds.
-SPRINKLE_SECONDS_AT_1000 = 0.05
+LAPACK_SECONDS_AT_1000 = {"symmetric": 0.11, "antisymmetric": 0.21}
+# From these sizes on, full spectra go through band form, either part in n³ times this: measured by
+# tests/bench.
+TWO_STAGE_FROM = {"symmetric": 1400, "antisymmetric": 500}
+TWO_STAGE_SECONDS = 0.45e-10
+# Bytes per matrix entry at the peak. LAPACK: the matrix, the sum or difference with its transpose, a copy.
+LAPACK_BYTES_AN_ENTRY, TWO_STAGE_BYTES_AN_ENTRY = 24, 8
+TWO_STAGE_PANELS_MIB = 64
+
+# Leading spectra, all measured by tests/bench. Matrix times vector and transpose times vector, in pairs, for
+# each eigenvalue of one sign; one pair with a packed relation, for each of its bytes; one pair by dominance
+# counting, for each n log₂ n; keeping the basis orthogonal, for each n count².
+# One leading spectrum, beside these, takes LEADING_SECONDS.
+LEADING_SECONDS = 0.05
+PAIRS_A_LEADING = 10.0
+PACKED_SECONDS_A_BYTE = 1e-9 / 16
+DOMINANCE_SECONDS = 5e-9
+BASIS_SECONDS = 3e-9
+# Vectors of the basis for each eigenvalue of one sign, and copies of a packed relation held at once.
+BASIS_VECTORS_A_LEADING = 6
+PACKED_COPIES = 3
+DOMINANCE_BYTES_AN_ELEMENT = 400
+
+# Relating points, seconds a pair; finding links, seconds for each n³: measured by tests/bench.
+RELATION_SECONDS = 2e-9
+LINK_SECONDS = 5e-12
+# Bytes per matrix entry while an order without positions is drawn.
+DRAWING_BYTES_AN_ENTRY = 4
+# Writing a packed relation to a table takes this many times its size, measured at 60 MiB.
+WRITING_COPIES = 6
+
 # Starting a job: imports.
 START_SECONDS = 1.0
 # Of fitting one series and of everything after it.
 FIT_SECONDS, CLOSING_SECONDS = 1.5, 8.0
-# Bytes per matrix entry at the peak: the matrix, its transpose's sum or difference, and LAPACK's copy.
-BYTES_AN_ENTRY = 24
-SPRINKLE_BYTES_AN_ENTRY = 9
 # An eigenvalue as a Python number, in a list, and in arrays.
 BYTES_AN_EIGENVALUE = 64
 BASE_MIB = 150
 
 
-def diagonalise_seconds(size: int, operator: OperatorChoice) -> float:
+def packed_bytes(size: int) -> float:
+    """Bytes of one packed relation."""
+    return size**2 / 16
+
+
+def full_seconds(size: int, part: str, solver: str = "auto") -> float:
     """Expected seconds of one full spectrum."""
-    return SECONDS_AT_1000[operator.part] * float(size / 1000) ** 3
+    if solver == "lapack" or (solver == "auto" and size < TWO_STAGE_FROM[part]):
+        return LAPACK_SECONDS_AT_1000[part] * float(size / 1000) ** 3
+    return TWO_STAGE_SECONDS * float(size) ** 3
 
 
-def sprinkle_seconds(size: int) -> float:
-    """Expected seconds of drawing one order, with its links and height."""
-    return 1e-3 + SPRINKLE_SECONDS_AT_1000 * float((size / 1000) ** 2.5)
+def leading_seconds(size: int, count: int, *, dominance: bool) -> float:
+    """Expected seconds of one leading spectrum, `count` of each sign."""
+    pair = DOMINANCE_SECONDS * size * log2(size) if dominance else PACKED_SECONDS_A_BYTE * packed_bytes(size)
+    return LEADING_SECONDS + PAIRS_A_LEADING * count * pair + BASIS_SECONDS * size * float(count) ** 2
 
 
-def diagonalise_mib(size: int) -> float:
+def diagonalise_seconds(point: Point, operator: OperatorChoice, spectrum: SpectrumSettings) -> float:
+    """Expected seconds of one spectrum."""
+    size = point.size
+    if spectrum.count is None or spectrum.takes_all(size):
+        seconds = full_seconds(size, operator.part, spectrum.solver)
+    else:
+        seconds = leading_seconds(size, spectrum.count, dominance=_by_dominance(point, operator))
+    return seconds + (LINK_SECONDS * float(size) ** 3 if operator.matrix == "link" else 0.0)
+
+
+def diagonalise_mib(point: Point, operator: OperatorChoice, spectrum: SpectrumSettings) -> float:
+    """Expected peak memory, MiB, of one spectrum."""
+    size = point.size
+    if spectrum.count is None or spectrum.takes_all(size):
+        return full_mib(size, spectrum.solver)
+    matrix = (
+        DOMINANCE_BYTES_AN_ELEMENT * size
+        if _by_dominance(point, operator)
+        else PACKED_COPIES * packed_bytes(size)
+    )
+    return BASE_MIB + (matrix + 8 * BASIS_VECTORS_A_LEADING * spectrum.count * size) / MIB
+
+
+def full_mib(size: int, solver: str = "auto") -> float:
     """Expected peak memory, MiB, of one full spectrum of either part."""
-    return BASE_MIB + BYTES_AN_ENTRY * size**2 / MIB
+    if solver == "lapack" or (solver == "auto" and size < min(TWO_STAGE_FROM.values())):
+        return BASE_MIB + LAPACK_BYTES_AN_ENTRY * size**2 / MIB
+    return BASE_MIB + TWO_STAGE_PANELS_MIB + TWO_STAGE_BYTES_AN_ENTRY * size**2 / MIB
 
 
-def sprinkle_mib(size: int) -> float:
-    """Expected peak memory, MiB, of drawing one order: links take dense float32 and boolean matrices."""
-    return BASE_MIB + SPRINKLE_BYTES_AN_ENTRY * size**2 / MIB
+def sprinkle_seconds(point: Point) -> float:
+    """Expected seconds of drawing one order, with its height, and its links up to LARGEST_PACKED."""
+    size = float(point.size)
+    if point.size <= LARGEST_PACKED:
+        return 1e-3 + RELATION_SECONDS * size**2 + LINK_SECONDS * size**3
+    return RELATION_SECONDS * (size * log2(size) if _in_the_plane(point) else size**2)
+
+
+def sprinkle_mib(point: Point) -> float:
+    """Expected peak memory, MiB, of drawing one order and writing it down."""
+    size = point.size
+    if not _has_positions(point):
+        return BASE_MIB + (DRAWING_BYTES_AN_ENTRY * size**2 + WRITING_COPIES * packed_bytes(size)) / MIB
+    if size <= LARGEST_PACKED:
+        return BASE_MIB + WRITING_COPIES * packed_bytes(size) / MIB
+    relation = 0.0 if _in_the_plane(point) else packed_bytes(size)
+    return BASE_MIB + (relation + DOMINANCE_BYTES_AN_ELEMENT * size) / MIB
 
 
 def fit_mib(eigenvalues: int) -> float:
@@ -51,11 +129,33 @@ def fit_mib(eigenvalues: int) -> float:
     return BASE_MIB + BYTES_AN_EIGENVALUE * eigenvalues / MIB
 
 
-def largest_size(available_mib: float) -> int:
-    """Largest size whose full spectrum fits."""
-    return int((max(available_mib - BASE_MIB, 0) * MIB / BYTES_AN_ENTRY) ** 0.5)
+def largest_size(mib_of: Callable[[int], float], available_mib: float, too_large: int) -> int:
+    """Largest size, below one that is too large, whose memory in `mib_of`, which rises, fits; 0 if none."""
+    fits = 0
+    while too_large - fits > 1:
+        middle = (fits + too_large) // 2
+        if mib_of(middle) <= available_mib:
+            fits = middle
+        else:
+            too_large = middle
+    return fits
 
 
 def memory_of_this_machine_mib() -> float:
     """All memory of this machine, MiB."""
     return float(psutil.virtual_memory().total) / MIB
+
+
+def _has_positions(point: Point) -> bool:
+    return ENSEMBLES[point.choice.ensemble].from_positions is not None
+
+
+def _in_the_plane(point: Point) -> bool:
+    """Whether the order is that of points of the plane, which needs no relation in memory."""
+    return _has_positions(point) and dict(point.choice.parameters).get("dimension") == 2
+
+
+def _by_dominance(point: Point, operator: OperatorChoice) -> bool:
+    # orders that are stored packed come back without their points
+    above = max(DOMINANCE_ABOVE, LARGEST_PACKED)
+    return operator.matrix == "causal" and point.size > above and _in_the_plane(point)

@@ -4,26 +4,30 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise, product
 from pathlib import Path
-from typing import Any, Literal, TypeVar
+from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
 from conetone.errors import SweepError
 from conetone.fit.windows import Growth, WindowRule
 from conetone.sprinkle.catalogue import ENSEMBLES
-from conetone.sweep.cost import diagonalise_mib, largest_size, memory_of_this_machine_mib
+from conetone.sweep.extents import resolve_spectra
 from conetone.sweep.faults import Steps, check_keys, describe, fields_in_words, first_fault, place_of
 from conetone.sweep.fields import SweepFields, WindowFields, allowed_in_words, by_file_name
+from conetone.sweep.memory import check_memory
 from conetone.sweep.points import Count, EnsembleChoice, OperatorChoice
 from conetone.sweep.reading import THE_FILE, read_yaml, shortened
-from conetone.sweep.settings import ExtrapolationSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
 
 T = TypeVar("T")
 
 
 @dataclass(frozen=True)
 class Sweep:
-    """A sweep with every default filled in and every list expanded; `replicates` has one entry a size."""
+    """A sweep with every default filled in and every list expanded.
+
+    `replicates` and `spectra` have one entry a size.
+    """
 
     name: str
     root_seed: int
@@ -31,7 +35,7 @@ class Sweep:
     sizes: tuple[int, ...]
     replicates: tuple[int, ...]
     operators: tuple[OperatorChoice, ...]
-    extent: Literal["full"]
+    spectra: tuple[SpectrumSettings, ...]
     windows: WindowSettings
     extrapolation: ExtrapolationSettings
 
@@ -56,18 +60,20 @@ def resolve_sweep(values: Any) -> Sweep:
     except ValidationError as error:
         raise first_fault(values, error) from None
     sizes = _rising(fields.sizes)
-    operators = _operators(values, fields)
-    _check_memory(values, sizes)
+    choices, operators = _choices(values, fields), _operators(values, fields)
+    windows = _windows(values, fields.windows, sizes[-1])
+    spectra = resolve_spectra(fields.spectrum, sizes, windows)
+    check_memory(values, sizes, spectra, choices, operators)
     omegas = _distinct(values, ("extrapolation", "omegas"), fields.extrapolation.omegas)
     return Sweep(
         name=fields.sweep,
         root_seed=fields.root_seed,
-        choices=_choices(values, fields),
+        choices=choices,
         sizes=sizes,
         replicates=_replicates(fields, values["replicates"]),
         operators=operators,
-        extent=fields.spectrum.extent,
-        windows=_windows(values, fields.windows, sizes[-1]),
+        spectra=spectra,
+        windows=windows,
         extrapolation=ExtrapolationSettings(omegas, fields.extrapolation.most_sizes_cut),
     )
 
@@ -184,15 +190,3 @@ def _distinct(values: Any, steps: Steps, found: Sequence[T]) -> tuple[T, ...]:
             raise SweepError(place_of(values, (*steps, i)), f"{describe(value)} again", "each value once")
         seen.add(value)
     return tuple(found)
-
-
-def _check_memory(values: Any, sizes: Sequence[int]) -> None:
-    available = memory_of_this_machine_mib()
-    for i, size in enumerate(sizes):
-        needed = diagonalise_mib(size)
-        if needed > available:
-            raise SweepError(
-                place_of(values, ("sizes", i)),
-                f"{size}, whose full spectrum needs {needed / 1024:,.1f} GiB of memory",
-                f"up to {largest_size(available)} on this machine, which has {available / 1024:,.1f} GiB",
-            )

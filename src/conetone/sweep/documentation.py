@@ -22,11 +22,13 @@ from conetone.sprinkle.catalogue import ENSEMBLES
 from conetone.sweep.definition import resolve_sweep
 from conetone.sweep.fields import (
     ALLOWED_KEY,
+    DEFAULT_KEY,
     ENSEMBLE_FIELDS,
     INNER_FIELDS,
     SweepFields,
     allowed_in_words,
     by_file_name,
+    default_in_words,
 )
 
 CLONE = Path(__file__).parents[3]
@@ -116,8 +118,11 @@ def _tidied(node: Any) -> Any:
         return [_tidied(inner) for inner in node]
     if not isinstance(node, dict):
         return node
-    spare = (ALLOWED_KEY, "discriminator", "title")
+    spare = {ALLOWED_KEY, DEFAULT_KEY, "discriminator", "title"}
+    spare |= {"default"} if DEFAULT_KEY in node else set()
     tidy = {key: _tidied(inner) for key, inner in node.items() if key not in spare}
+    if isinstance(default := tidy.get("default"), dict):
+        tidy["default"] = {key: inner for key, inner in default.items() if inner is not None}
     if ALLOWED_KEY in node:
         tidy["description"] = f"{node['description']}; allowed: {node[ALLOWED_KEY]}"
     return tidy
@@ -176,6 +181,7 @@ def _field_table(fields: Mapping[str, FieldInfo]) -> str:
         nested = name in INNER_FIELDS or name == "ensembles"
         shown = f"[`{name}`](#{name})" if nested else f"`{name}`"
         default = "required" if field.is_required() else f"`{_yaml(_default(field))}`"
+        default = default_in_words(field) or default
         if name in INNER_FIELDS and not field.is_required():
             default = "see there"
         rows.append([shown, field.description or "", allowed_in_words(field), default])
@@ -189,7 +195,8 @@ def _table(head: list[str], rows: list[list[str]]) -> str:
 
 def _default(field: FieldInfo) -> Any:
     default = field.default
-    return default.model_dump(by_alias=True) if isinstance(default, BaseModel) else default
+    # what depends on another field has no default to write down
+    return default.model_dump(by_alias=True, exclude_none=True) if isinstance(default, BaseModel) else default
 
 
 def _yaml(value: Any) -> str:

@@ -14,6 +14,7 @@ from conetone.fit.models import MODELS
 from conetone.fit.windows import GROWTH_PATTERN
 from conetone.operators.catalogue import OPERATORS, PARTS
 from conetone.sprinkle.catalogue import ENSEMBLES, Ensemble, Parameter
+from conetone.sweep.settings import Solver
 
 NAME_PATTERN = r"^[a-z0-9]+(-[a-z0-9]+)*$"
 LONGEST_NAME = 60
@@ -22,7 +23,9 @@ LARGEST_SIZE = 10_000_000
 MOST_REPLICATES = 10_000_000
 # Every lower end of a window is fitted with every upper end, and every exponent with every ω.
 MOST_ALTERNATIVES = 20
-ALLOWED_KEY = "x-allowed"
+MOST_LEADING = 10_000
+TOLERANCE, SMALLEST_TOLERANCE, LARGEST_TOLERANCE = 1e-9, 1e-12, 1e-6
+ALLOWED_KEY, DEFAULT_KEY = "x-allowed", "x-default"
 
 
 class Fields(BaseModel):
@@ -31,15 +34,27 @@ class Fields(BaseModel):
     model_config = ConfigDict(extra="forbid", strict=True, frozen=True, allow_inf_nan=False)
 
 
-def described(meaning: str, allowed: str, **constraints: Any) -> Any:
-    """A field with its meaning and, for error messages and the documentation, what is allowed in words."""
-    return Field(description=meaning, json_schema_extra={ALLOWED_KEY: allowed}, **constraints)
+def described(meaning: str, allowed: str, *, default_in_words: str = "", **constraints: Any) -> Any:
+    """A field with its meaning and, for error messages and the documentation, what is allowed in words.
+
+    `default_in_words` is for a field that depends on another and has no default of its own.
+    """
+    extra: dict[str, Any] = {ALLOWED_KEY: allowed}
+    if default_in_words:
+        extra[DEFAULT_KEY], constraints["default"] = default_in_words, None
+    return Field(description=meaning, json_schema_extra=extra, **constraints)
 
 
 def allowed_in_words(field: FieldInfo) -> str:
     """What a field made by `described` allows, for people."""
     extra = field.json_schema_extra
     return str(extra[ALLOWED_KEY]) if isinstance(extra, dict) else ""
+
+
+def default_in_words(field: FieldInfo) -> str:
+    """What stands for the default of a field that depends on another, else nothing."""
+    extra = field.json_schema_extra
+    return str(extra.get(DEFAULT_KEY, "")) if isinstance(extra, dict) else ""
 
 
 def by_file_name(fields: type[Fields]) -> dict[str, FieldInfo]:
@@ -71,6 +86,7 @@ Omega = Annotated[float, Field(gt=0, le=4)]
 PartName = Literal["symmetric", "antisymmetric"]
 MatrixName = Literal["causal", "link"]
 ModelName = Literal["power", "top-correction"]
+ExtentName = Literal["full", "leading", "auto"]
 assert get_args(PartName) == PARTS
 assert get_args(MatrixName) == tuple(OPERATORS)
 assert get_args(ModelName) == tuple(MODELS)
@@ -119,10 +135,39 @@ class OperatorFields(Fields):
     )
 
 
+def _in_yaml(number: float) -> str:
+    return f"{number:.1e}".replace("e-0", "e-")
+
+
 class SpectrumFields(Fields):
     """Which eigenvalues are computed."""
 
-    extent: Literal["full"] = described("`full`: every eigenvalue", "full", default="full")
+    extent: ExtentName = described(
+        "`full`: every eigenvalue; `leading`: the largest of each sign, without a dense matrix;"
+        " `auto`: at each size whichever is forecast to be quicker, if the windows allow it",
+        names(get_args(ExtentName)),
+        default="full",
+    )
+    count: int = described(
+        "with `leading` or `auto`: eigenvalues of each sign",
+        f"a whole number from 1 to {MOST_LEADING}",
+        ge=1,
+        le=MOST_LEADING,
+        default_in_words="with `leading` required; with `auto` as many as the windows take and a few more",
+    )
+    tolerance: float = described(
+        "with `leading` or `auto`: largest residual of an eigenvalue, relative to the largest eigenvalue",
+        f"a number from {_in_yaml(SMALLEST_TOLERANCE)} to {_in_yaml(LARGEST_TOLERANCE)}",
+        ge=SMALLEST_TOLERANCE,
+        le=LARGEST_TOLERANCE,
+        default_in_words=f"with `leading` and `auto` {_in_yaml(TOLERANCE)}",
+    )
+    solver: Solver = described(
+        "of full spectra: `two-stage` (ours, through band form); `lapack`, as a check of it;"
+        " `auto`: the quicker at each size",
+        names(get_args(Solver)),
+        default="auto",
+    )
 
 
 def _growth_allowed(example: str) -> str:

@@ -19,7 +19,7 @@ from conetone.sweep.paths import (
     piece_path,
     spectra_path,
 )
-from conetone.sweep.points import Point, Series
+from conetone.sweep.points import OperatorChoice, Point, Series
 from conetone.sweep.requests import (
     AggregateRequest,
     DiagonaliseRequest,
@@ -28,15 +28,19 @@ from conetone.sweep.requests import (
     Request,
     SprinkleRequest,
 )
+from conetone.sweep.settings import SpectrumSettings
 
 STAGES = ("sprinkle", "diagonalise", "fit", "aggregate", "figure")
+# Leading spectra of so many elements take minutes and more, and share their products among threads, of which
+# Snakemake grants no more than it has cores.
+MANY_ELEMENTS, MANY_THREADS = 50_000, 4
 
 
 @dataclass(frozen=True)
 class Job:
     """One job: its stage, its name within the stage, what is asked, what it reads and writes.
 
-    `seconds` and `mib` are forecasts. Paths are relative to the sweep's folder.
+    `seconds`, of one core, and `mib` are forecasts. Paths are relative to the sweep's folder.
     """
 
     stage: str
@@ -46,6 +50,7 @@ class Job:
     outputs: tuple[Path, ...]
     seconds: float
     mib: float = cost.BASE_MIB
+    threads: int = 1
 
     @property
     def memory_mb(self) -> int:
@@ -74,6 +79,11 @@ class Plan:
         return [
             Series(choice, operator) for choice in self.sweep.choices for operator in self.sweep.operators
         ]
+
+    @cached_property
+    def spectra(self) -> dict[int, SpectrumSettings]:
+        """Which eigenvalues are computed, by size."""
+        return dict(zip(self.sweep.sizes, self.sweep.spectra, strict=True))
 
     @cached_property
     def blocks(self) -> list[Block]:
@@ -111,29 +121,35 @@ class Plan:
                 SprinkleRequest(block.point, self.sweep.root_seed, block.first, block.stop),
                 (),
                 (orders_path(block),),
-                cost.START_SECONDS + len(block.replicates) * cost.sprinkle_seconds(block.point.size),
-                cost.sprinkle_mib(block.point.size),
+                cost.START_SECONDS + len(block.replicates) * cost.sprinkle_seconds(block.point),
+                cost.sprinkle_mib(block.point),
             )
             for block in self.blocks
         ]
 
     def _diagonalise(self) -> list[Job]:
         return [
-            Job(
-                "diagonalise",
-                f"{block.name}.{operator.name}",
-                DiagonaliseRequest(
-                    block.point, operator.matrix, operator.part, self.sweep.extent, block.first, block.stop
-                ),
-                (orders_path(block),),
-                (spectra_path(block, operator),),
-                cost.START_SECONDS
-                + len(block.replicates) * cost.diagonalise_seconds(block.point.size, operator),
-                cost.diagonalise_mib(block.point.size),
-            )
+            self._diagonalise_of(block, operator)
             for block in self.blocks
             for operator in self.sweep.operators
         ]
+
+    def _diagonalise_of(self, block: Block, operator: OperatorChoice) -> Job:
+        point = block.point
+        spectrum = self.spectra[point.size]
+        request = DiagonaliseRequest(point, operator.matrix, operator.part, spectrum, block.first, block.stop)
+        seconds = len(block.replicates) * cost.diagonalise_seconds(point, operator, spectrum)
+        many = point.size >= MANY_ELEMENTS and not spectrum.takes_all(point.size)
+        return Job(
+            "diagonalise",
+            f"{block.name}.{operator.name}",
+            request,
+            (orders_path(block),),
+            (spectra_path(block, operator),),
+            cost.START_SECONDS + seconds,
+            cost.diagonalise_mib(point, operator, spectrum),
+            MANY_THREADS if many else 1,
+        )
 
     def _fit(self) -> list[Job]:
         return [self._fit_of(series) for series in self.series]
@@ -142,7 +158,8 @@ class Plan:
         request = FitRequest(series, self.sweep.sizes, self.sweep.replicates, self.sweep.windows)
         inputs = [spectra_path(b, series.operator) for size in request.sizes for b in request.blocks(size)]
         outputs = tuple(piece_path(series.name, table) for table in PIECE_TABLES)
-        eigenvalues = max(n * r for n, r in zip(request.sizes, request.replicates, strict=True))
+        counts = [2 * each.count if each.count else size for size, each in self.spectra.items()]
+        eigenvalues = max(n * r for n, r in zip(counts, request.replicates, strict=True))
         memory = cost.fit_mib(eigenvalues)
         return Job("fit", series.name, request, tuple(inputs), outputs, cost.FIT_SECONDS, memory)
 

@@ -13,7 +13,7 @@ from conetone.operators.catalogue import Part
 from conetone.records.tables import VERSION
 from conetone.sweep.blocks import Block, blocks_of
 from conetone.sweep.points import OperatorChoice, Point, Series, canonical
-from conetone.sweep.settings import ExtrapolationSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
 
 
 @dataclass(frozen=True)
@@ -96,7 +96,7 @@ class DiagonaliseRequest(Request):
     point: Point
     matrix: str
     part: Part
-    extent: str
+    spectrum: SpectrumSettings
     first: int
     stop: int
 
@@ -105,14 +105,15 @@ class DiagonaliseRequest(Request):
             "point": self.point.as_json(),
             "matrix": self.matrix,
             "part": self.part,
-            "extent": self.extent,
+            "spectrum": self.spectrum.as_json(),
             "replicates": [self.first, self.stop],
         }
 
     @classmethod
     def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
         point = Point.from_json(fields["point"])
-        return cls(point, fields["matrix"], fields["part"], fields["extent"], *fields["replicates"])
+        spectrum = SpectrumSettings.from_json(fields["spectrum"])
+        return cls(point, fields["matrix"], fields["part"], spectrum, *fields["replicates"])
 
 
 @dataclass(frozen=True)
