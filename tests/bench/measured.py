@@ -32,11 +32,11 @@ def watch():
     global peak
     while not over.wait(0.005):
         peak = max(peak, resident())
-watcher = threading.Thread(target=watch)
+watcher = threading.Thread(target=watch, daemon=True)
 watcher.start()
-start = time.perf_counter()
+began = time.perf_counter()
 {code}
-seconds = time.perf_counter() - start
+seconds = time.perf_counter() - began
 over.set()
 watcher.join()
 print(json.dumps([seconds, max(peak, resident()) - before, result]))
