@@ -142,7 +142,8 @@ def diagonalise(
     from conetone.stages.diagonalise import diagonalise_block
     from conetone.sweep.requests import DiagonaliseRequest
 
-    with _threads(threads):
+    # the cores granted are for products, whose bits do not depend on them; those of BLAS do
+    with _threads(1):
         asked = DiagonaliseRequest.parse(request)
         diagonalise_block(asked, orders, output, threads=threads, own_process=True)
 

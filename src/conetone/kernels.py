@@ -6,7 +6,8 @@ directory. Numba replaces whole files in it, so that any number of processes may
 either finds a finished kernel or compiles its own. Without a folder to write to, kernels are compiled anew
 in each process.
 
-A kernel calls only functions of its own module, whose file's change of time makes a cached kernel stale.
+A kernel calls only functions of its own module, whose file's change of time makes a cached kernel stale;
+constants it may also take from sprinkle/relation.py, which enters the folder's name like this file.
 """
 
 import hashlib
@@ -82,7 +83,10 @@ def compile_kernels() -> Iterator[tuple[str, int, int]]:
 
 def compiled_signatures() -> dict[str, tuple[str, list[Any]]]:
     """For each kernel its declared signature, and those it has been compiled for."""
-    return {name: (signature, list(compiled.signatures)) for name, signature, compiled in _KERNELS}
+    return {
+        f"{compiled.py_func.__module__}.{name}": (signature, list(compiled.signatures))
+        for name, signature, compiled in _KERNELS
+    }
 
 
 @cache
@@ -96,7 +100,7 @@ def cache_folder() -> Path | None:
     bases = [Path(chosen)] if chosen else [platformdirs.user_cache_path("conetone"), _private_folder()]
     for base in bases:
         folder = base / _processor_and_versions()
-        if _usable(folder):
+        if _usable(folder) and (base != _private_folder() or _is_ours_alone(base)):
             return folder
     warnings.warn(
         f"compiled kernels cannot be kept: {' and '.join(map(str, bases))} cannot be written; every process "
@@ -112,16 +116,25 @@ def _private_folder() -> Path:
 
 def _processor_and_versions() -> str:
     features = binding.get_host_cpu_features().flatten()
-    versions = f"{__version__} {numba_version} {llvmlite.__version__}"
-    digest = hashlib.sha256(f"{features} {versions}".encode()).hexdigest()[:12]
+    versions = f"{features} {__version__} {numba_version} {llvmlite.__version__}"
+    here = Path(__file__)
+    sources = [source.read_bytes() for source in (here, here.parent / "sprinkle" / "relation.py")]
+    digest = hashlib.sha256(b"\n".join([versions.encode(), *sources])).hexdigest()[:12]
     return f"{binding.get_host_cpu_name()}-{digest}"
 
 
 def _usable(folder: Path) -> bool:
     """Whether a folder can be made and written, and is ours: its files are run as code."""
     try:
-        folder.mkdir(mode=0o700, parents=True, exist_ok=True)
+        for each in (*reversed(folder.parents), folder):
+            if not each.exists():
+                each.mkdir(mode=0o700, exist_ok=True)
         with tempfile.NamedTemporaryFile(dir=folder):
-            return folder.stat().st_uid == os.getuid()
+            return _is_ours_alone(folder)
     except OSError:
         return False
+
+
+def _is_ours_alone(folder: Path) -> bool:
+    status = folder.stat()
+    return status.st_uid == os.getuid() and not status.st_mode & 0o022

@@ -31,9 +31,19 @@ def matrix(n):
 def add_ratio(report, work, ours, theirs, against, asked, unit="s"):
     ratio = theirs / ours
     report.ratios.append(
-        (work, f"{ours:.3g} {unit}", f"{against}: {theirs:.3g} {unit}", f"{ratio:.2f}", f"≥ {asked}")
+        (
+            work,
+            f"{ours:.3g} {unit}",
+            f"{against}: {theirs:.3g} {unit}",
+            f"{ratio:.3g}",
+            f"≥ {asked}" + missed(ratio < asked),
+        )
     )
     return ratio
+
+
+def missed(is_missed):
+    return ", missed" if is_missed else ""
 
 
 @pytest.mark.parametrize(
@@ -65,10 +75,9 @@ def test_full_spectrum_against_its_operation_count(once, report, part):
             f"{ours:.3g} s",
             f"4/3 n³ at dgemm's {rate / 1e9:.1f} GFlop/s: {counted:.3g} s",
             f"{ours / counted:.2f}",
-            "≤ 2",
+            "≤ 2" + missed(ours > 2 * counted),
         )
     )
-    assert counted < ours
 
 
 def dgemm_rate(n=3000):

@@ -6,10 +6,13 @@ from scipy.sparse.linalg import LinearOperator, eigsh
 from tests.orders import antichain, chain, complete_bipartite, copies, product_of_chains, random_orders
 
 from conetone.diagonalise import leading
+from conetone.diagonalise.basis import Basis
 from conetone.diagonalise.full import full_spectrum
 from conetone.diagonalise.leading import leading_spectrum
+from conetone.errors import MatrixError
 from conetone.operators.catalogue import OPERATORS, PARTS
 from conetone.operators.packed import PackedProduct
+from conetone.sprinkle.relation import PackedRelation
 
 EPSILON = np.finfo(float).eps
 
@@ -67,13 +70,50 @@ def test_bounds_bound_what_has_not_converged(part, monkeypatch):
     for order in random_orders(2, 900, seed=11):
         if order.elements < 400:
             continue
-        found = leading_spectrum(PackedProduct(order.relation), part, 20, tolerance=1e-15)
+        found = leading_spectrum(PackedProduct(order.relation), part, 20, tolerance=1e-12)
         every = full_spectrum(order.relation.dense(np.float64), part, solver="lapack").eigenvalues
         assert not found.converged
         # to each value an eigenvalue within the bound; of the values, some are still far from exact
         distance = np.abs(found.eigenvalues[:, np.newaxis] - every).min(axis=1)
         assert (distance <= found.residual_bounds).all()
         assert found.residual_bounds.max() > 1e-12 * found.norm
+
+
+@pytest.mark.parametrize(("count", "tolerance"), [(0, 1e-9), (5, 0.0), (5, float("nan")), (5, 1e-16)])
+def test_what_cannot_be_reached_is_refused(count, tolerance):
+    allowed = r"allowed: (a whole number from 1|at least 5\.7e-14 for 5 of each)"
+    with pytest.raises(MatrixError, match=allowed):
+        leading_spectrum(PackedProduct(chain(500).relation), "symmetric", count, tolerance=tolerance)
+
+
+def unions_of_small_pieces(seed):
+    """Many copies of a small matrix, and unrelated elements: high multiplicities, low rank."""
+    generator = np.random.default_rng(seed)
+    small = np.triu(generator.random((5, 5)) < 0.5, 1)
+    matrix = np.zeros((300, 300), dtype=bool)
+    for first in range(0, 5 * int(generator.integers(5, 40)), 5):
+        matrix[first : first + 5, first : first + 5] = small
+    return np.triu(matrix, 1)
+
+
+@pytest.mark.parametrize("sign", [1, -1])
+def test_the_krylov_relation_holds_where_directions_run_out(sign):
+    replaced = 0
+    for seed in range(40):
+        packed = PackedProduct(PackedRelation.from_matrix(unions_of_small_pieces(seed)))
+        a = packed.relation.dense(np.float64)
+        a = a + sign * a.T
+        basis = Basis(len(a), 96, 8, sign, 1, np.random.default_rng(seed))
+        for _ in range(2):  # before and after a restart
+            while not basis.is_full:
+                basis.extend(lambda block, a=a: a @ block)
+            v, t = basis._vectors[:, : basis.length], basis._projected[: basis.length, : basis.length]
+            defect = a @ v - v @ t - basis._next @ basis._coupling[:, : basis.length]
+            assert np.abs(defect).max() < 1e-12 * max(np.linalg.norm(a, 2), 1)
+            assert np.abs(v.T @ v - np.eye(basis.length)).max() < 1e-13
+            replaced += basis.ran_dry
+            basis.restart(basis.ritz(), 20)
+    assert replaced > 10
 
 
 @pytest.mark.parametrize("part", PARTS)

@@ -47,9 +47,17 @@ def test_of_matrices_that_are_not_triangular(part):
         np.testing.assert_allclose(found, expected, atol=tolerance, rtol=0)
         strided = np.zeros((2 * elements, 2 * elements))[::2, ::2]
         strided[...] = matrix
-        for layout in (matrix.copy(order="C"), matrix.copy(order="F"), strided):
+        backwards = matrix[::-1, ::-1].copy()[::-1, ::-1]
+        for layout in (matrix.copy(order="C"), matrix.copy(order="F"), strided, backwards):
             overwritten = full_spectrum(layout, part, solver="two-stage", overwrite=True)
             np.testing.assert_allclose(overwritten.eigenvalues, expected, atol=tolerance, rtol=0)
+
+
+@pytest.mark.parametrize("kind", [np.int64, np.float32, np.bool_])
+def test_of_matrices_of_other_numbers(kind):
+    matrix = chain(300).relation.dense(np.bool_).astype(kind)
+    found = full_spectrum(matrix, "symmetric", solver="two-stage", overwrite=True).eigenvalues
+    np.testing.assert_allclose(found, [-1.0] * 299 + [299.0], atol=1e-10)
 
 
 @pytest.mark.parametrize("sign", [1, -1])

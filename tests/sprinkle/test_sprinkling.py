@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from conetone.errors import OrderError
+from conetone.sprinkle import sprinkling
 from conetone.sprinkle.catalogue import ENSEMBLES, sprinkle
 from conetone.sprinkle.dominance import DominanceOrder, LightConeRanks
 from conetone.sprinkle.minkowski import diamond_points, order_of_points, order_of_positions
@@ -118,8 +119,9 @@ def test_every_ensemble_of_points_gives_its_orders_back():
             continue
         assert order.positions.shape == (100, 3)
         assert not order.positions.flags.writeable
-        again = ensemble.from_positions(order.positions)
+        again = ensemble.from_positions(order.positions, 2)
         assert again.positions_digest == order.positions_digest
+        assert again.threads == 2
         assert again.digest == order.digest
         assert order.links.pairs == Order(order.relation).links.pairs
 
@@ -137,6 +139,17 @@ def test_the_digest_of_positions_changes_with_any_bit_and_with_the_shape():
     shapes = {order_of_positions(np.zeros(shape)).positions_digest for shape in [(6, 2), (4, 3), (3, 4)]}
     empty = {order_of_positions(np.zeros((0, d))).positions_digest for d in range(2, 6)}
     assert len(shapes | empty) == 7
+
+
+@pytest.mark.parametrize("dimension", [2, 3])
+def test_positions_are_checked_and_copied_once(dimension, monkeypatch):
+    seen = []
+    validated = sprinkling._validated
+    monkeypatch.setattr(sprinkling, "_validated", lambda points: seen.append(points) or validated(points))
+    points = np.zeros((3, dimension))
+    order = order_of_positions(points, threads=2)
+    assert (len(seen), order.threads) == (1, 2)
+    assert seen[0] is points
 
 
 def test_the_caller_keeps_his_array():

@@ -118,6 +118,13 @@ def test_a_signal_keeps_finished_rows_and_the_next_job_takes_them_up(
     assert not resume_path(SPECTRA).exists()
 
 
+def test_an_output_outside_the_folder_of_the_sweep_stays(tmp_path: Path) -> None:
+    output = tmp_path / "elsewhere.parquet"
+    sprinkle_block(sprinkle_request(), output)
+    assert len(read_rows(output)) == 5
+    assert list(tmp_path.glob("**/*.parquet")) == [output]
+
+
 def test_a_second_signal_does_not_cut_the_saving_short(orders: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     write, solve, calls = block.write_table, diagonalise.full_spectrum, iter(range(100))
 

@@ -49,8 +49,8 @@ def test_an_order_comes_back_from_its_table(
         assert (row["positions"] is None) == (row["links"] is not None) == (size == 50)
         assert (row["packed_relation"] is None) == (size > 50)
         assert (row["relations"], row["height"]) == (order.relations, order.height)
-        again = order_of(row, "here")
-        assert again.digest == order.digest
+        again = order_of(row, "here", threads=2)
+        assert (again.digest, again.threads) == (order.digest, 2)
         assert (again.relations, again.height) == (order.relations, order.height)
 
 

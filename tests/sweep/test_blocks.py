@@ -48,7 +48,7 @@ def test_the_length_follows_from_the_size_alone(size):
 def test_no_block_takes_much_longer_than_its_target(size):
     point = Point(DIAMOND, size)
     slowest = max(full_seconds(size, part, "lapack") for part in LAPACK_SECONDS_AT_1000)
-    assert block_length(point) == 1 or block_length(point) * slowest <= TARGET_SECONDS
+    assert block_length(point) == 1 or block_length(point) * slowest <= 2 * TARGET_SECONDS
 
 
 @pytest.mark.parametrize(

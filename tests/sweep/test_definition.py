@@ -325,6 +325,15 @@ def test_the_largest_size_is_the_one_that_fits_into_memory(
     assert error.advice == "spectrum.extent: leading needs less"
 
 
+def test_an_order_that_is_too_large_is_not_helped_by_leading_spectra(monkeypatch: pytest.MonkeyPatch) -> None:
+    values = complete_sweep()
+    values["spectrum"] = {"extent": "full"}
+    monkeypatch.setattr("conetone.sweep.memory.sprinkle_mib", lambda point: 1e9)
+    error = fault_of(values)
+    assert "whose order needs" in error.found
+    assert error.advice == ""
+
+
 def test_leading_spectra_fit_where_full_ones_do_not(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr("conetone.sweep.memory.memory_of_this_machine_mib", lambda: 24 * 1024.0)
     values = complete_sweep()

@@ -7,13 +7,15 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import eigh, solve_triangular
+from scipy.linalg import eigh, qr, solve_triangular
 
 Floats = NDArray[np.float64]
 
 EPSILON = float(np.finfo(np.float64).eps)
 # Rows of the basis that one thread works on; fixed, so that sums do not depend on the number of threads.
 ROWS = 8192
+# Rows rotated at once in a restart: few, because they are held twice.
+ROTATED_ROWS = 1024
 # A block is as good as dependent, and Cholesky's factor no good, beyond this condition number.
 WORST_CONDITION = 1e7
 # A unit vector that loses more than half of itself along the basis was made of rounding.
@@ -55,6 +57,7 @@ class Basis:
         self.blocks_since_look = 0
         self.ran_dry = False
         self._scale = 0.0
+        self._dropped = 0.0
         self._next = np.linalg.qr(generator.standard_normal((elements, width)))[0]
 
     @property
@@ -78,12 +81,13 @@ class Basis:
         second = self._take_off(block)
         again, other, still_dry = _orthonormal(block, MOST_LEFT)
         self.ran_dry |= dry or still_dry
+        coupling = other @ triangle
         if dry or still_dry:
-            again, other = self._with_new_directions(again, other)
+            again, coupling = self._with_new_directions(again @ coupling, small)
         self._projected[: m + p, here] = first + second @ triangle
         self._next = again
         self._coupling[...] = 0
-        self._coupling[:, here] = other @ triangle
+        self._coupling[:, here] = coupling
 
     def ritz(self) -> Ritz:
         """Eigenvalues of A's projection with the norms of their residuals."""
@@ -92,10 +96,12 @@ class Basis:
         t = self._projected[:m, :m]
         mean = (t + self.sign * t.T) / 2
         vectors: Any
-        values, vectors = eigh(mean if self.sign > 0 else 1j * mean, driver="evd")
+        # what the projection lacks in symmetry is rounding, and part of the residual like what was dropped
+        rounding = float(np.linalg.norm(t - mean)) + self._dropped
+        hermitian = mean if self.sign > 0 else 1j * mean
+        values, vectors = eigh(hermitian, driver="evd", overwrite_a=True, check_finite=False)
         residuals = np.linalg.norm(self._coupling[:, :m] @ vectors, axis=0)
-        # what the projection lacks in symmetry is rounding, and part of the residual
-        return Ritz(np.asarray(values, dtype=np.float64), residuals + np.linalg.norm(t - mean), vectors)
+        return Ritz(np.asarray(values, dtype=np.float64), residuals + rounding, vectors)
 
     def restart(self, ritz: Ritz, each: int) -> None:
         """Keep the space of the `each` largest and `each` smallest Ritz values."""
@@ -106,8 +112,8 @@ class Basis:
             of_pairs = ritz.vectors[:, m - each :]
             kept = np.concatenate([of_pairs.real, of_pairs.imag], axis=1)
         rotation = np.linalg.qr(kept)[0]
-        for start in range(0, len(self._vectors), ROWS):
-            rows = self._vectors[start : start + ROWS]
+        for start in range(0, len(self._vectors), ROTATED_ROWS):
+            rows = self._vectors[start : start + ROTATED_ROWS]
             rows[:, : 2 * each] = rows[:, :m] @ rotation
         self._projected[: 2 * each, : 2 * each] = rotation.T @ self._projected[:m, :m] @ rotation
         coupling = self._coupling[:, :m] @ rotation
@@ -131,15 +137,22 @@ class Basis:
             list(pool.map(subtract, pieces))
         return components
 
-    def _with_new_directions(self, block: Floats, triangle: Floats) -> tuple[Floats, Floats]:
-        """Replace dependent columns by random directions, which A does not couple to the basis yet."""
-        dependent = np.abs(np.diagonal(triangle)) <= MOST_LEFT
-        fresh = block.copy()
-        fresh[:, dependent] = self._generator.standard_normal((len(block), int(dependent.sum())))
+    def _with_new_directions(self, remainder: Floats, small: float) -> tuple[Floats, Floats]:
+        """An orthonormal block that spans a remainder, shape (n, p), and random directions for what it lacks.
+
+        Returns the block and its coefficients of the remainder. Columns are pivoted, so that what is dropped,
+        and counted in `_dropped`, is below `small`.
+        """
+        pivoted, triangle, _ = qr(remainder, mode="economic", pivoting=True, check_finite=False)
+        block = np.asarray(pivoted, dtype=np.float64)
+        lacking = np.abs(np.diagonal(triangle)) <= small
+        block[:, lacking] = self._generator.standard_normal((len(block), int(lacking.sum())))
         for _ in range(2):
-            self._take_off(fresh)
-            fresh = np.linalg.qr(fresh)[0]
-        return fresh, fresh.T @ block @ triangle
+            self._take_off(block)
+            block = np.linalg.qr(block)[0]
+        coefficients = block.T @ remainder
+        self._dropped += float(np.linalg.norm(remainder - block @ coefficients))
+        return block, coefficients
 
 
 def _orthonormal(block: Floats, small: float) -> tuple[Floats, Floats, bool]:

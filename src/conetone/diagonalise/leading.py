@@ -10,8 +10,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from conetone.diagonalise.basis import Basis
+from conetone.diagonalise.basis import EPSILON, Basis
 from conetone.diagonalise.full import full_spectrum
+from conetone.errors import MatrixError
 from conetone.operators.catalogue import Part
 from conetone.operators.product import Product
 
@@ -25,8 +26,8 @@ BASIS, SPARE_BLOCKS = 1.6, 6
 # Of that room, what a restart keeps.
 KEPT = 0.7
 MOST_RESTARTS = 60
-# Blocks between two looks at the convergence.
-BLOCKS_A_LOOK = 8
+# Looks at the convergence, each an eigenproblem of the basis' size, while the basis is filled.
+LOOKS = 10
 # Rounding: of a dense solver in units of n ε ‖A‖, of a residual in units of ε ‖A‖ per basis vector.
 DENSE_SAFETY, SAFETY = 20.0, 4.0
 
@@ -67,12 +68,16 @@ def leading_spectrum(
     same, so that the same matrix gives the same numbers. Where the eigenvalues wanted are a large
     part of all, the matrix is made dense and every eigenvalue computed.
     """
-    n = product.elements
-    wanted = 2 * count
+    if count < 1:
+        raise MatrixError("count", str(count), "a whole number from 1")
+    n, wanted = product.elements, 2 * count
     room = BLOCK * (int(BASIS * wanted) // BLOCK + SPARE_BLOCKS)
     if n < 2 * room:
         return _of_the_dense_matrix(product, part, count)
     sign = 1 if part == "symmetric" else -1
+    floor = SAFETY * room * EPSILON
+    if not tolerance >= floor:
+        raise MatrixError("tolerance", f"{tolerance:.1e}", f"at least {floor:.1e} for {count} of each sign")
     generator = generator if generator is not None else np.random.Generator(np.random.Philox(0))
 
     def multiply(block: Floats) -> Floats:
@@ -93,12 +98,12 @@ def _iterate(
         products += BLOCK
         full = basis.is_full
         # a basis that ran out of new directions has seen no more than BLOCK copies of an eigenvalue
-        due = basis.length >= 2 * count + BLOCK and basis.blocks_since_look >= BLOCKS_A_LOOK
+        due = basis.length >= 2 * count + BLOCK and basis.blocks_since_look >= basis.room // (LOOKS * BLOCK)
         if not full and (basis.ran_dry or not due):
             continue
         ritz = basis.ritz()
         chosen = np.concatenate([np.arange(count), np.arange(len(ritz.values) - count, len(ritz.values))])
-        bounds = ritz.residuals[chosen] + SAFETY * basis.length * np.finfo(np.float64).eps * ritz.norm
+        bounds = ritz.residuals[chosen] + SAFETY * basis.length * EPSILON * ritz.norm
         converged = bool((bounds <= tolerance * max(ritz.norm, np.finfo(np.float64).tiny)).all())
         if converged or (full and restarts == MOST_RESTARTS):
             return LeadingSpectrum(
@@ -117,5 +122,5 @@ def _of_the_dense_matrix(product: Product, part: Part, count: int) -> LeadingSpe
     values = spectrum.eigenvalues
     if n > 2 * count:
         values = np.concatenate([values[:count], values[-count:]])
-    bounds = np.full(len(values), DENSE_SAFETY * n * np.finfo(np.float64).eps * norm)
+    bounds = np.full(len(values), DENSE_SAFETY * n * EPSILON * norm)
     return LeadingSpectrum(values.copy(), bounds, True, norm, n, f"dense {spectrum.solver}")

@@ -28,8 +28,8 @@ VECTOR, ALIGNED = ir.VectorType(ir.DoubleType(), WIDTH), 8
 ROWS = 8192
 # Word columns of one cache line.
 LINE = 8
-# Parts of the matrix with sums of their own, which are added in order: results do not depend on threads.
-PARTS = 16
+# Pieces of the matrix with sums of their own, which are added in order: results do not depend on threads.
+PIECES = 16
 
 
 class PackedProduct:
@@ -41,7 +41,7 @@ class PackedProduct:
     def __init__(self, relation: PackedRelation, threads: int = 1) -> None:
         self.relation = relation
         self.threads = threads
-        self._edges = _edges_of_parts(relation.elements)
+        self._edges = _edges_of_pieces(relation.elements)
 
     @property
     def elements(self) -> int:
@@ -77,10 +77,10 @@ class PackedProduct:
         return total, down
 
 
-def _edges_of_parts(elements: int) -> list[int]:
-    """Word columns at which the parts begin and end: equal areas of the triangle, whole cache lines."""
+def _edges_of_pieces(elements: int) -> list[int]:
+    """Word columns at which the pieces begin and end: equal areas of the triangle, whole cache lines."""
     words = words_in_a_row(elements)
-    edges = {min(words, LINE * round(words * (k / PARTS) ** 0.5 / LINE)) for k in range(PARTS)}
+    edges = {min(words, LINE * round(words * (k / PIECES) ** 0.5 / LINE)) for k in range(PIECES)}
     return sorted(edges | {0, words})
 
 

@@ -145,5 +145,8 @@ def inputs_digest(paths: Sequence[Path]) -> str:
 
 
 def resume_path(path: Path) -> Path:
-    """Where the finished part of an interrupted output waits; paths are relative to the sweep's folder."""
-    return Path(RESUME_FOLDER) / path
+    """Where the finished part of an interrupted output waits: for a path relative to the sweep's folder there.
+
+    For an absolute one in the folder beside it.
+    """
+    return path.parent / RESUME_FOLDER / path.name if path.is_absolute() else Path(RESUME_FOLDER) / path

@@ -159,7 +159,8 @@ SPECTRA = Table(
         Column(
             "residual_bound",
             REALS,
-            "|error| of each eigenvalue is at most this; null where sum rules audit a full computation",
+            "an eigenvalue of the matrix lies at most this far from each; null where every eigenvalue was"
+            " computed, even if only the ends are kept",
             nullable=True,
         ),
         Column("elements", COUNT, "number of elements", "elements", nullable=True),
@@ -171,7 +172,7 @@ SPECTRA = Table(
         ),
         Column("pairing_defect", REAL, "max |λ_i + λ_(n+1−i)| / ‖A‖, antisymmetric part only", nullable=True),
         Column("solver", TEXT, "library routine that found the eigenvalues", nullable=True),
-        Column("threads", COUNT, "BLAS threads"),
+        Column("threads", COUNT, "BLAS threads; those of products, which change no number, aside"),
         *COSTS,
         *STATUS,
     ),

@@ -32,8 +32,8 @@ class Ensemble:
     `sampler(elements, generator, **parameters)` draws one order. `region` names the spacetime
     region it is sprinkled into, None where the orders resemble no manifold.
     `ordering_fraction` gives the exact expected ordering fraction of given parameters, where one is known.
-    `from_positions(points)` gives the order of stored points back, shape (n, d), sorted by time; it raises
-    OrderError for any others. None where orders are not made from points.
+    `from_positions(points, threads)` gives the order of stored points back, shape (n, d), sorted by time; it
+    raises OrderError for any others. None where orders are not made from points.
     """
 
     name: str
@@ -43,7 +43,7 @@ class Ensemble:
     source: str
     region: Literal["diamond", "box"] | None = None
     ordering_fraction: Callable[[Parameters], float] | None = None
-    from_positions: Callable[[Points], Order] | None = None
+    from_positions: Callable[[Points, int], Order] | None = None
 
 
 DIMENSION = Parameter("dimension", 2, 7, "spacetime dimension, time included")

@@ -36,15 +36,19 @@ def diamond_points(elements: int, generator: np.random.Generator, dimension: int
 def order_of_points(points: Points, threads: int = 1) -> Sprinkling:
     """The causal order of points of flat spacetime, shape (n, d), time first, unit speed of light.
 
-    Element i of the result is the i-th earliest point. i precedes j if t_j − t_i ≥ |x_j − x_i|.
-    `threads` is the number of threads that find relation and links. Raises OrderError as Sprinkling does.
+    Element i of the result is the i-th earliest point. i precedes j > i if (t_j − t_i)² ≥ |x_j − x_i|², for
+    d = 2 if t_i − x_i ≤ t_j − x_j and t_i + x_i ≤ t_j + x_j. `threads` is the number of threads that find
+    relation and links. Raises OrderError as Sprinkling does.
     """
     return order_of_positions(points[np.argsort(points[:, 0], kind="stable")], threads)
 
 
 def order_of_positions(positions: ArrayLike, threads: int = 1) -> Sprinkling:
     """As `order_of_points`, of points that are sorted by time already; raises OrderError if they are not."""
-    order = Sprinkling(positions, relation_of_points, threads=threads)
-    if order.positions.shape[1] == 2:
-        return DominanceOrder(order.positions, threads=threads)
-    return order
+    try:
+        of_the_plane = np.shape(positions)[1:] == (2,)
+    except ValueError:  # rows of unequal length, which Sprinkling refuses
+        of_the_plane = False
+    if of_the_plane:
+        return DominanceOrder(positions, threads=threads)
+    return Sprinkling(positions, relation_of_points, threads=threads)

@@ -57,7 +57,7 @@ def diagonalise_block(
         row = stored[replicate]
         if row["status"] != "ok":
             return {"status": "failed", "reason": f"no order: {row['reason']}"}
-        order = order_of(row, f"{orders}, replicate {replicate}")
+        order = order_of(row, f"{orders}, replicate {replicate}", threads)
         found = {name: row[name] for name in ("elements", "ordering_fraction", "digest")}
         whole = request.spectrum.takes_all(order.elements)
         return {**found, **(_full(request, order) if whole else _leading(request, order, threads))}

@@ -42,15 +42,19 @@ def columns_of(order: Order) -> dict[str, Any]:
     }
 
 
-def order_of(row: Mapping[str, Any], place: str) -> Order:
-    """The order of one row; raises TableError, naming the place, if it is not the one its digest names."""
+def order_of(row: Mapping[str, Any], place: str, threads: int = 1) -> Order:
+    """The order of one row; raises TableError, naming the place, if it is not the one its digest names.
+
+    `threads` find its relation and its links.
+    """
     rebuild = ENSEMBLES[row["ensemble"]].from_positions
     if row["positions"] is None:
-        order = Order(PackedRelation.from_bytes(row["elements"], row["packed_relation"]))
+        relation = PackedRelation.from_bytes(row["elements"], row["packed_relation"])
+        order = Order(relation, threads=threads)
         digest: str | None = order.digest
     elif rebuild is not None:
         positions = np.array(row["positions"], dtype=np.float64).reshape(row["elements"], -1)
-        order = rebuild(positions)
+        order = rebuild(positions, threads)
         digest = order.positions_digest
     else:
         raise TableError(place, f"positions of {row['ensemble']}", "its packed relation", "delete this file")

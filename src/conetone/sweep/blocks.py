@@ -11,8 +11,8 @@ from conetone.sweep.points import Point
 # Short enough that two cores stay busy, long enough that starting Python does not matter.
 TARGET_SECONDS = 20.0
 LONGEST_BLOCK = 500
-# A replicate of n = 1000, seconds, growing as n³: of the slowest solver that ever was. Faster ones must not
-# change it, nor what is computed of the spectra: blocks of another length would draw their orders again.
+# A replicate of n = 1000, seconds, growing as n³. No forecast: it stays as it is whatever the solver, the
+# machine and the spectra, because blocks of another length would draw their orders again.
 SECONDS_AT_1000 = 0.21
 
 

@@ -1,6 +1,8 @@
 """Seconds and memory of one replicate, from its size: for forecasts, `extent: auto` and the memory check.
 
-Constants are of one core; they never enter a number in a table.
+Seconds, where nothing else is said, were measured on 2026-12-01 on one core whose dgemm runs at 18 GFlop/s.
+They are constants, not this machine's: with `extent: auto` they decide which eigenvalues are computed, and a
+change of one can change what an existing sweep asks for. tests/sweep/test_extents.py pins the decisions.
 """
 
 from collections.abc import Callable
@@ -17,32 +19,36 @@ from conetone.sweep.settings import SpectrumSettings
 MIB = 2**20
 
 # One eigenproblem of n = 1000 through LAPACK, seconds.
-LAPACK_SECONDS_AT_1000 = {"symmetric": 0.11, "antisymmetric": 0.21}
-# From these sizes on, full spectra go through band form, either part in n³ times this: measured by
-# tests/bench.
+LAPACK_SECONDS_AT_1000 = {"symmetric": 0.17, "antisymmetric": 0.37}
+# From these sizes on, full spectra go through band form, either part in n³ times this: n = 4000 in 7.1 s.
 TWO_STAGE_FROM = {"symmetric": 1400, "antisymmetric": 500}
-TWO_STAGE_SECONDS = 0.45e-10
+TWO_STAGE_SECONDS = 1.1e-10
 # Bytes per matrix entry at the peak. LAPACK: the matrix, the sum or difference with its transpose, a copy.
 LAPACK_BYTES_AN_ENTRY, TWO_STAGE_BYTES_AN_ENTRY = 24, 8
 TWO_STAGE_PANELS_MIB = 64
 
-# Leading spectra, all measured by tests/bench. Matrix times vector and transpose times vector, in pairs, for
-# each eigenvalue of one sign; one pair with a packed relation, for each of its bytes; one pair by dominance
-# counting, for each n log₂ n; keeping the basis orthogonal, for each n count².
-# One leading spectrum, beside these, takes LEADING_SECONDS.
+# Leading spectra. Matrix times vector and transpose times vector, in pairs, for each eigenvalue of one sign:
+# 6 at tolerance 1e-6, 7 at 1e-9. One pair with a packed relation, for each of its bytes (16 at n = 100,000:
+# 9 ns); one pair by dominance counting, for each n log₂ n (16 at n = 10⁶: 2.7 s).
+PAIRS_A_LEADING = 7.0
+PACKED_SECONDS_A_BYTE = 9e-9 / 16
+DOMINANCE_SECONDS = 8.4e-9
+# Keeping the basis orthogonal, for each n count² (about 120 operations, counted); and what takes no matter
+# how many, an estimate.
+BASIS_SECONDS = 7e-9
 LEADING_SECONDS = 0.05
-PAIRS_A_LEADING = 10.0
-PACKED_SECONDS_A_BYTE = 1e-9 / 16
-DOMINANCE_SECONDS = 5e-9
-BASIS_SECONDS = 3e-9
-# Vectors of the basis for each eigenvalue of one sign, and copies of a packed relation held at once.
-BASIS_VECTORS_A_LEADING = 6
-PACKED_COPIES = 3
+# Vectors of the basis for each eigenvalue of one sign, and besides; looks at the convergence, each an
+# eigenproblem of the projection onto them, in their number cubed times this and squared times these bytes.
+BASIS_VECTORS_A_LEADING, SPARE_BASIS_VECTORS = 3.2, 48
+LOOKS, LOOK_SECONDS, LOOK_BYTES_AN_ENTRY = 6, 2e-9, 100
+# Packed relations held at once, as read and in words; a link matrix is one more.
+PACKED_COPIES = 2
 DOMINANCE_BYTES_AN_ELEMENT = 400
 
-# Relating points, seconds a pair; finding links, seconds for each n³: measured by tests/bench.
-RELATION_SECONDS = 2e-9
-LINK_SECONDS = 5e-12
+# Relating points, seconds a pair (n = 20,000: 0.33 s); finding links, seconds for each n³ (n = 20,000 in
+# four dimensions: 0.3 s).
+RELATION_SECONDS = 0.8e-9
+LINK_SECONDS = 4e-14
 # Bytes per matrix entry while an order without positions is drawn.
 DRAWING_BYTES_AN_ENTRY = 4
 # Writing a packed relation to a table takes this many times its size, measured at 60 MiB.
@@ -72,7 +78,14 @@ def full_seconds(size: int, part: str, solver: str = "auto") -> float:
 def leading_seconds(size: int, count: int, *, dominance: bool) -> float:
     """Expected seconds of one leading spectrum, `count` of each sign."""
     pair = DOMINANCE_SECONDS * size * log2(size) if dominance else PACKED_SECONDS_A_BYTE * packed_bytes(size)
-    return LEADING_SECONDS + PAIRS_A_LEADING * count * pair + BASIS_SECONDS * size * float(count) ** 2
+    vectors = BASIS_SECONDS * size * float(count) ** 2
+    looks = LOOKS * LOOK_SECONDS * basis_vectors(count) ** 3
+    return LEADING_SECONDS + PAIRS_A_LEADING * count * pair + vectors + looks
+
+
+def basis_vectors(count: int) -> float:
+    """Vectors of the basis in which `count` eigenvalues of each sign are found, to about one block."""
+    return BASIS_VECTORS_A_LEADING * count + SPARE_BASIS_VECTORS
 
 
 def diagonalise_seconds(point: Point, operator: OperatorChoice, spectrum: SpectrumSettings) -> float:
@@ -90,12 +103,12 @@ def diagonalise_mib(point: Point, operator: OperatorChoice, spectrum: SpectrumSe
     size = point.size
     if spectrum.count is None or spectrum.takes_all(size):
         return full_mib(size, spectrum.solver)
+    copies = PACKED_COPIES + (operator.matrix == "link")
     matrix = (
-        DOMINANCE_BYTES_AN_ELEMENT * size
-        if _by_dominance(point, operator)
-        else PACKED_COPIES * packed_bytes(size)
+        DOMINANCE_BYTES_AN_ELEMENT * size if _by_dominance(point, operator) else copies * packed_bytes(size)
     )
-    return BASE_MIB + (matrix + 8 * BASIS_VECTORS_A_LEADING * spectrum.count * size) / MIB
+    vectors = basis_vectors(spectrum.count)
+    return BASE_MIB + (matrix + 8 * size * vectors + LOOK_BYTES_AN_ENTRY * vectors**2) / MIB
 
 
 def full_mib(size: int, solver: str = "auto") -> float:

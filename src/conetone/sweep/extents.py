@@ -12,8 +12,8 @@ from conetone.sweep.faults import describe
 from conetone.sweep.fields import MOST_LEADING, TOLERANCE, SpectrumFields, allowed_in_words, by_file_name
 from conetone.sweep.settings import SpectrumSettings, WindowSettings, smallest_for
 
-# Eigenvalues beyond those that the windows take: this share, and up to the next multiple of the step, so that
-# a slightly longer window asks for nothing new.
+# Eigenvalues beyond those that the windows take, for the eye: this share, and up to the next multiple of the
+# step. Windows that differ by less than a step often ask for the same number, but not across its edge.
 MARGIN, STEP = 1 / 16, 8
 
 

@@ -36,7 +36,7 @@ def check_memory(
             if without and size > LARGEST_WITHOUT_POSITIONS:
                 found = f"{size}, at which an order of {choice.label} takes too much room in a table"
                 raise SweepError(place, found, f"up to {LARGEST_WITHOUT_POSITIONS} for this ensemble")
-        for what, mib_of in _jobs(list(kinds.values()), operators, spectrum):
+        for what, mib_of, advice in _jobs(list(kinds.values()), operators, spectrum):
             needed = mib_of(size)
             if needed <= available:
                 continue
@@ -45,7 +45,7 @@ def check_memory(
                 place,
                 f"{size}, whose {what} needs {needed / 1024:,.1f} GiB of memory",
                 f"up to {largest} on this machine, which has {available / 1024:,.1f} GiB",
-                "spectrum.extent: leading needs less" if spectrum.extent == "full" else "",
+                advice,
             )
 
 
@@ -55,12 +55,13 @@ def _without_positions(choice: EnsembleChoice) -> bool:
 
 def _jobs(
     choices: Sequence[EnsembleChoice], operators: Sequence[OperatorChoice], spectrum: SpectrumSettings
-) -> Iterator[tuple[str, Callable[[int], float]]]:
-    """Every kind of job at a size, as a word and its memory by size."""
+) -> Iterator[tuple[str, Callable[[int], float], str]]:
+    """Every kind of job at a size: in words, its memory by size, and what to do if that is too much."""
+    advice = "spectrum.extent: leading needs less" if spectrum.extent == "full" else ""
     for choice in choices:
         for operator in operators:
-            yield _in_words(spectrum), _diagonalise(choice, operator, spectrum)
-        yield "order", _sprinkle(choice)
+            yield _in_words(spectrum), _diagonalise(choice, operator, spectrum), advice
+        yield "order", _sprinkle(choice), ""
 
 
 def _in_words(spectrum: SpectrumSettings) -> str:
