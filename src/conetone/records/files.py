@@ -145,8 +145,8 @@ def inputs_digest(paths: Sequence[Path]) -> str:
 
 
 def resume_path(path: Path) -> Path:
-    """Where the finished part of an interrupted output waits: for a path relative to the sweep's folder there.
+    """Where the finished part of an interrupted output waits: in the sweep's folder, its path's origin.
 
-    For an absolute one in the folder beside it.
+    An absolute path's waits beside it.
     """
     return path.parent / RESUME_FOLDER / path.name if path.is_absolute() else Path(RESUME_FOLDER) / path
