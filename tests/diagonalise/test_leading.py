@@ -38,10 +38,10 @@ def assert_bounds_hold(order, part, count, tolerance, operator="causal"):
 @pytest.mark.parametrize("operator", OPERATORS)
 def test_against_full_spectra_of_every_ensemble(part, operator):
     krylov = 0
-    for i, order in enumerate(random_orders(6, 700, seed=3)):
+    for i, order in enumerate(random_orders(4, 700, seed=3)):
         found = assert_bounds_hold(order, part, 1 + i, (1e-6, 1e-9)[i % 2], operator)
         krylov += found.solver == "block-krylov"
-    assert krylov > 6
+    assert krylov > 4
 
 
 @pytest.mark.parametrize("part", PARTS)
