@@ -47,7 +47,7 @@ def once(benchmark: Any) -> Callable[..., Any]:
 
 def pytest_terminal_summary(terminalreporter: Any) -> None:
     if REPORT.ratios:
-        terminalreporter.section("ratios, one core, one BLAS thread")
+        terminalreporter.section("measured, on one core with one BLAS thread where nothing else is said")
         rows = [("work", "here", "against", "ratio", "asked for"), *REPORT.ratios]
         widths = [max(len(row[c]) for row in rows) for c in range(5)]
         for row in rows:
