@@ -42,8 +42,8 @@ class Ritz:
 class Basis:
     """Orthonormal columns V of shape (n, m), the next block Q, and T = Vᵀ A V with A V = V T + Q R Eᵀ.
 
-    A = sign · Aᵀ. T is computed in full, not only its band, so that the relation holds to rounding and to what
-    was dropped where directions ran out, which residuals include.
+    A = sign · Aᵀ. T is computed in full, not only its band, so that the relation holds to rounding, and to
+    what was dropped where directions ran out, which residuals include.
     """
 
     def __init__(
