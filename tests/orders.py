@@ -4,8 +4,12 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from conetone.operators.catalogue import SpectralPart
 from conetone.sprinkle.catalogue import ENSEMBLES, sprinkle
 from conetone.sprinkle.order import Order
+
+# The parts that are matrices with eigenvalues; singular values have tests of their own.
+SELF_ADJOINT: tuple[SpectralPart, ...] = ("symmetric", "antisymmetric")
 
 
 def chain(elements: int) -> Order:

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from conetone.operators.catalogue import OPERATORS, PARTS
+from conetone.operators.catalogue import OPERATORS, PARTS, SPECTRAL_PARTS, spectral_part
 from conetone.operators.causal import causal_matrix
 from conetone.operators.link import link_matrix
 from conetone.sprinkle.catalogue import ENSEMBLES, sprinkle
@@ -58,4 +58,12 @@ def test_every_matrix_of_the_catalogue(operator):
 
 def test_names():
     assert all(operator.name == name for name, operator in OPERATORS.items())
-    assert PARTS == ("symmetric", "antisymmetric")
+
+
+def test_every_series_is_ranked_from_one_spectrum():
+    assert SPECTRAL_PARTS == ("symmetric", "antisymmetric", "singular")
+    assert [spectral_part(part) for part in SPECTRAL_PARTS] == list(SPECTRAL_PARTS)
+    assert {part: spectral_part(part) for part in PARTS if part not in SPECTRAL_PARTS} == {
+        "symmetric-positive": "symmetric",
+        "symmetric-negative": "symmetric",
+    }

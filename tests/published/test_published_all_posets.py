@@ -5,10 +5,11 @@ from math import factorial
 
 import numpy as np
 import pytest
+from tests.orders import SELF_ADJOINT
 
 from conetone.diagonalise.audit import audit
 from conetone.diagonalise.full import full_spectrum
-from conetone.operators.catalogue import OPERATORS, PARTS
+from conetone.operators.catalogue import OPERATORS
 from conetone.operators.causal import causal_matrix
 from conetone.operators.link import link_matrix
 from conetone.sprinkle.order import Order
@@ -108,7 +109,7 @@ def test_height_is_the_longest_chain_and_the_index_of_nilpotency():
 
 
 @pytest.mark.parametrize("operator", OPERATORS)
-@pytest.mark.parametrize("part", PARTS)
+@pytest.mark.parametrize("part", SELF_ADJOINT)
 def test_sum_rules(part, operator):
     for matrix in EVERY:
         order = Order.from_matrix(matrix)

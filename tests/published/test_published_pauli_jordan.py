@@ -50,17 +50,6 @@ def test_leading_eigenvalues_of_the_antisymmetric_part(matrices):
     np.testing.assert_allclose(spectra[:, :10], -found * ELEMENTS, rtol=0, atol=1e-9)
 
 
-def test_leading_singular_values(matrices):
-    # s/n → 1/[π²(a − ½)(b − ½)], a, b ≥ 1: derived here, a product of two integrations (Volterra) in
-    # light-cone coordinates. The second and third are equal in the limit, apart at finite size.
-    singular = np.array([np.linalg.svd(matrix, compute_uv=False)[:3] for matrix in matrices]) / ELEMENTS
-    found = np.column_stack([singular[:, 0], singular[:, 1:].mean(axis=1)])
-    expected = 1 / (np.pi**2 * 0.5 * np.array([0.5, 1.5]))
-    np.testing.assert_allclose(expected, [0.405285, 0.135095], atol=5e-7)
-    error = found.std(axis=0, ddof=1) / np.sqrt(len(found))
-    assert (np.abs(found.mean(axis=0) - expected) < 5 * error + FINITE_SIZE).all()
-
-
 def test_the_first_fifty_eigenvalues_of_a_hundred_thousand_elements():
     elements, ranks = 100_000, 50
     expected = exact_eigenvalues(ranks)

@@ -1,16 +1,16 @@
-"""Every eigenvalue of a part of a matrix: the one door to dense solvers."""
+"""Every eigenvalue or singular value of a matrix: the one door to dense solvers."""
 
 from dataclasses import dataclass
 from typing import Literal, get_args
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import eigvalsh, eigvalsh_tridiagonal, lapack
+from scipy.linalg import eigvalsh, eigvalsh_tridiagonal, lapack, svdvals
 
 from conetone.diagonalise.band import Tridiagonal, reduce_to_tridiagonal
 from conetone.diagonalise.blas import eigenvalues_of_tridiagonal, singular_values_of_bidiagonal
 from conetone.errors import MatrixError
-from conetone.operators.catalogue import Part
+from conetone.operators.catalogue import SpectralPart
 from conetone.operators.square import zero_matrix
 
 Floats = NDArray[np.float64]
@@ -28,7 +28,7 @@ FOLD = 512
 
 @dataclass(frozen=True)
 class Spectrum:
-    """Eigenvalues, ascending, shape (n,), dimensionless, and the solver that found them."""
+    """Eigenvalues or singular values, ascending, shape (n,), dimensionless, and what found them."""
 
     eigenvalues: Floats
     solver: str
@@ -38,7 +38,7 @@ class Spectrum:
 
 
 def full_spectrum(
-    matrix: Floats, part: Part, *, solver: Solver = "auto", overwrite: bool = False
+    matrix: Floats, part: SpectralPart, *, solver: Solver = "auto", overwrite: bool = False
 ) -> Spectrum:
     """Every eigenvalue of one part of a real matrix M of shape (n, n).
 
@@ -46,14 +46,22 @@ def full_spectrum(
     2010). Real arithmetic; accurate to about n ε ‖A‖. `two-stage` reduces to a band, then to tridiagonal
     form, in place: with `overwrite` M is destroyed, and memory stays near that of M. `lapack` is slower,
     takes three times the memory, and shares no code with it but BLAS; `auto` takes whichever is faster.
-    Raises MatrixError if M is not square or not finite, numpy.linalg.LinAlgError if an iteration does not
-    converge.
+    `singular` stands for the singular values of M, which only LAPACK finds. Raises MatrixError if M is not
+    square or not finite, or if singular values are to be found in two stages; numpy.linalg.LinAlgError if an
+    iteration does not converge.
     """
     _check(matrix)
     n = len(matrix)
     if n < 2:  # a Poisson count may draw an empty order; one element has no relations
-        only = 2 * matrix.diagonal() if part == "symmetric" else np.zeros(n)
-        return Spectrum(np.array(only, dtype=np.float64), "none")
+        diagonal = matrix.diagonal()
+        of_one = {"symmetric": 2 * diagonal, "antisymmetric": np.zeros(n), "singular": np.abs(diagonal)}
+        return Spectrum(np.array(of_one[part], dtype=np.float64), "none")
+    if part == "singular":
+        if solver == "two-stage":
+            raise MatrixError("solver", solver, "auto or lapack for singular values")
+        # of the transpose, in the column order LAPACK wants
+        falling = svdvals(matrix.T, overwrite_a=overwrite, check_finite=False)
+        return Spectrum(np.asarray(falling[::-1], dtype=np.float64), "lapack-dgesdd")
     if solver == "auto":
         solver = "lapack" if n < CROSSOVER[part] else "two-stage"
     if solver == "two-stage":
@@ -78,7 +86,7 @@ def _check(matrix: Floats) -> None:
             raise MatrixError(f"matrix[{i}, {j}]", str(matrix[i, j]), "finite numbers")
 
 
-def _in_two_stages(matrix: Floats, part: Part) -> Floats:
+def _in_two_stages(matrix: Floats, part: SpectralPart) -> Floats:
     sign = 1 if part == "symmetric" else -1
     if matrix.strides[0] == matrix.itemsize:
         matrix = matrix.T  # the same part, but for a sign

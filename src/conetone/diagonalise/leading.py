@@ -1,11 +1,12 @@
-"""The largest eigenvalues of each sign of a part of a matrix, of which only products with vectors are known.
+"""The largest eigenvalues of each sign, or singular values, of a matrix of which only products are known.
 
 A block Krylov method with full orthogonalisation and thick restarts (Wu & Simon 2000, SIAM J. Matrix Anal.
 Appl. 22, 602), in real arithmetic for both parts: the projection of an antisymmetric part is real and skew.
+The singular values s of M are the positive eigenvalues of [[0, M], [Mᵀ, 0]], whose spectrum is ±s.
 """
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,8 +14,8 @@ from numpy.typing import NDArray
 from conetone.diagonalise.basis import EPSILON, Basis
 from conetone.diagonalise.full import full_spectrum
 from conetone.errors import MatrixError
-from conetone.operators.catalogue import Part
-from conetone.operators.product import Product
+from conetone.operators.catalogue import SpectralPart
+from conetone.operators.product import Doubled, Product
 
 Floats = NDArray[np.float64]
 
@@ -34,7 +35,9 @@ DENSE_SAFETY, SAFETY = 20.0, 4.0
 
 @dataclass(frozen=True)
 class LeadingSpectrum:
-    """The `count` largest and `count` smallest eigenvalues, or all if there are no more.
+    """The `count` largest and `count` smallest eigenvalues, or the `count` largest singular values.
+
+    All of them, if there are no more.
 
     `eigenvalues` ascending and `residual_bounds`, of the same shape, absolute: an eigenvalue of A lies at
     most that far from the one given. `norm` is ‖A‖, `products` the number of vectors multiplied.
@@ -55,13 +58,15 @@ class LeadingSpectrum:
 
 def leading_spectrum(
     product: Product,
-    part: Part,
+    part: SpectralPart,
     count: int,
     *,
     tolerance: float = 1e-9,
     generator: np.random.Generator | None = None,
 ) -> LeadingSpectrum:
-    """The `count` largest eigenvalues of each sign of one part of a matrix M; parts as in full_spectrum.
+    """The `count` largest eigenvalues of each sign of one part of a matrix M, or its largest singular values.
+
+    Parts as in full_spectrum.
 
     `product.apply(X)` gives (M X, Mᵀ X). Residuals are brought below `tolerance` ‖A‖; if that takes more than
     MOST_RESTARTS restarts, `converged` is false. The start is drawn from `generator`, by default always the
@@ -74,19 +79,32 @@ def leading_spectrum(
     room = BLOCK * (int(BASIS * wanted) // BLOCK + SPARE_BLOCKS)
     if n < 2 * room:
         return _of_the_dense_matrix(product, part, count)
-    sign = 1 if part == "symmetric" else -1
+    sign = -1 if part == "antisymmetric" else 1
     floor = SAFETY * room * EPSILON
     if not tolerance >= floor:
         raise MatrixError("tolerance", f"{tolerance:.1e}", f"at least {floor:.1e} for {count} of each sign")
     generator = generator if generator is not None else np.random.Generator(np.random.Philox(0))
+    if part == "singular":
+        product = Doubled(product)
 
     def multiply(block: Floats) -> Floats:
         forward, backward = product.apply(block)
         forward += sign * backward
         return forward
 
-    basis = Basis(n, room, BLOCK, sign, product.threads, generator)
-    return _iterate(basis, multiply, count, tolerance)
+    basis = Basis(product.elements, room, BLOCK, sign, product.threads, generator)
+    found = _iterate(basis, multiply, count, tolerance)
+    return _largest_singular_values(found, count) if part == "singular" else found
+
+
+def _largest_singular_values(pairs: LeadingSpectrum, count: int) -> LeadingSpectrum:
+    """Those among the eigenvalues ±s; what rounding took below zero is put back, and its bound widened."""
+    values, bounds = pairs.eigenvalues[-count:], pairs.residual_bounds[-count:]
+    return replace(
+        pairs,
+        eigenvalues=np.maximum(values, 0.0),
+        residual_bounds=bounds + np.maximum(-values, 0.0),
+    )
 
 
 def _iterate(
@@ -114,13 +132,18 @@ def _iterate(
             restarts += 1
 
 
-def _of_the_dense_matrix(product: Product, part: Part, count: int) -> LeadingSpectrum:
+def _of_the_dense_matrix(product: Product, part: SpectralPart, count: int) -> LeadingSpectrum:
     n = product.elements
     matrix, _ = product.apply(np.eye(n))
     spectrum = full_spectrum(matrix, part)
     norm = float(np.abs(spectrum.eigenvalues).max(initial=0.0))
-    values = spectrum.eigenvalues
-    if n > 2 * count:
-        values = np.concatenate([values[:count], values[-count:]])
+    values = ends(spectrum.eigenvalues, part, count)
     bounds = np.full(len(values), DENSE_SAFETY * n * EPSILON * norm)
     return LeadingSpectrum(values.copy(), bounds, True, norm, n, f"dense {spectrum.solver}")
+
+
+def ends(spectrum: Floats, part: SpectralPart, count: int) -> Floats:
+    """The `count` first and last of ascending eigenvalues, or the last of singular values; at most all."""
+    if part == "singular":
+        return spectrum[-count:]
+    return spectrum if len(spectrum) <= 2 * count else np.concatenate([spectrum[:count], spectrum[-count:]])

@@ -1,4 +1,4 @@
-"""Every matrix by name, and the two self-adjoint parts a spectrum is taken of."""
+"""Every matrix by name, and the parts of it whose spectra are taken and ranked."""
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -15,12 +15,28 @@ from conetone.operators.product import Product
 from conetone.sprinkle.dominance import DominanceOrder
 from conetone.sprinkle.order import Order
 
-Part = Literal["symmetric", "antisymmetric"]
+# What is diagonalised of a matrix M: M + Mᵀ, i(M − Mᵀ), and singular values.
+SpectralPart = Literal["symmetric", "antisymmetric", "singular"]
+SPECTRAL_PARTS: tuple[SpectralPart, ...] = get_args(SpectralPart)
+# What is ranked, a series each; both signs of M + Mᵀ are ranked from its one spectrum.
+Part = Literal["symmetric", "symmetric-positive", "symmetric-negative", "antisymmetric", "singular"]
 PARTS: tuple[Part, ...] = get_args(Part)
+_RANKED_FROM: Mapping[Part, SpectralPart] = {
+    "symmetric": "symmetric",
+    "symmetric-positive": "symmetric",
+    "symmetric-negative": "symmetric",
+    "antisymmetric": "antisymmetric",
+    "singular": "singular",
+}
 
 # Orders of points of the plane with more elements than this are multiplied by counting dominated points, in
 # n log n steps instead of n². From a table, only orders beyond LARGEST_PACKED come back with their points.
 DOMINANCE_ABOVE = 10_000
+
+
+def spectral_part(part: Part) -> SpectralPart:
+    """The part whose spectrum a series is ranked from."""
+    return _RANKED_FROM[part]
 
 
 @dataclass(frozen=True)

@@ -3,7 +3,7 @@
 from math import gamma
 
 
-def chain_coefficient(dimension: int, length: int) -> float:
+def chain_coefficient(dimension: float, length: int) -> float:
     """χ_k such that a Poisson sprinkling of N expected elements has N^k χ_k expected k-chains.
 
     With a fixed number n of elements it is n! / (n − k)! χ_k. Dimensionless. Meyer 1988:
@@ -18,6 +18,6 @@ def chain_coefficient(dimension: int, length: int) -> float:
     )
 
 
-def ordering_fraction_of_diamond(dimension: int) -> float:
+def ordering_fraction_of_diamond(dimension: float) -> float:
     """Expected share of related pairs in a flat causal diamond, 2 χ_2; 1/2 in two dimensions."""
     return 2 * chain_coefficient(dimension, 2)

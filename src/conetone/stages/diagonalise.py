@@ -3,12 +3,9 @@
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-from numpy.typing import NDArray
-
 from conetone.diagonalise.audit import audit
 from conetone.diagonalise.full import full_spectrum
-from conetone.diagonalise.leading import LeadingSpectrum, leading_spectrum
+from conetone.diagonalise.leading import LeadingSpectrum, ends, leading_spectrum
 from conetone.operators.catalogue import OPERATORS
 from conetone.records.files import inputs_digest, read_rows
 from conetone.records.provenance import blas_threads
@@ -82,7 +79,9 @@ def _full(request: DiagonaliseRequest, order: Order) -> dict[str, Any]:
     spectrum = full_spectrum(operator.matrix(order), request.part, solver=solver, overwrite=True)
     checks = audit(spectrum.eigenvalues, request.part, operator.square_sum(order))
     return {
-        "eigenvalues": spectrum.eigenvalues if count is None else ends(spectrum.eigenvalues, count),
+        "eigenvalues": spectrum.eigenvalues
+        if count is None
+        else ends(spectrum.eigenvalues, request.part, count),
         "sum_defect": checks.sum_defect,
         "square_sum_defect": checks.square_sum_defect,
         "pairing_defect": checks.pairing_defect,
@@ -90,13 +89,6 @@ def _full(request: DiagonaliseRequest, order: Order) -> dict[str, Any]:
         "status": "ok" if checks.passed else "suspect",
         "reason": None if checks.passed else f"a sum rule fails by more than {checks.tolerance:.1e}",
     }
-
-
-def ends(eigenvalues: NDArray[np.float64], count: int) -> NDArray[np.float64]:
-    """The `count` first and the `count` last of ascending eigenvalues; all, if they are no more."""
-    if len(eigenvalues) <= 2 * count:
-        return eigenvalues
-    return np.concatenate([eigenvalues[:count], eigenvalues[-count:]])
 
 
 def _leading(request: DiagonaliseRequest, order: Order, threads: int) -> dict[str, Any]:
