@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from conetone.fit.ranking import standard_error
+from conetone.fit.logs import standard_error
 from conetone.fit.resample import jackknife_variance
 
 samples = st.lists(st.floats(-100, 100), min_size=2, max_size=30)

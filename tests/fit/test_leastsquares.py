@@ -1,10 +1,10 @@
-"""Weighted linear least squares against scipy and the normal equations."""
+"""Weighted and generalised linear least squares against SciPy and the normal equations."""
 
 import numpy as np
 import pytest
 from scipy.optimize import curve_fit
 
-from conetone.fit.leastsquares import weighted_least_squares
+from conetone.fit.leastsquares import generalised_least_squares, weighted_least_squares
 
 
 def problem(seed):
@@ -79,3 +79,60 @@ def test_a_term_that_repeats_another_does_no_harm():
     # the pseudo-inverse shares the slope evenly
     np.testing.assert_allclose(fit.parameters, [1, 2, 2], rtol=1e-12)
     assert fit.chi2 == pytest.approx(0, abs=1e-20)
+
+
+def covariances(generator, errors):
+    """A random covariance matrix for each row of errors."""
+    points = errors.shape[1]
+    mixed = generator.normal(size=(len(errors), points, 2 * points))
+    covariance = mixed @ np.swapaxes(mixed, 1, 2)
+    scale = errors / np.sqrt(np.diagonal(covariance, axis1=1, axis2=2))
+    return covariance * scale[:, :, np.newaxis] * scale[:, np.newaxis, :]
+
+
+def test_generalised_against_the_normal_equations():
+    for seed in range(200):
+        design, values, errors = problem(seed)
+        given = covariances(np.random.default_rng(seed), errors)
+        fit = generalised_least_squares(design, values, given)
+        for copy in range(5):
+            weights = np.linalg.solve(given[copy], design)
+            covariance = np.linalg.inv(design.T @ weights)
+            gain = covariance @ weights.T
+            parameters = gain @ values[copy]
+            residuals = values[copy] - design @ parameters
+            np.testing.assert_allclose(fit.gain[copy], gain, rtol=1e-6, atol=1e-9)
+            np.testing.assert_allclose(fit.covariance[copy], covariance, rtol=1e-6, atol=1e-9)
+            np.testing.assert_allclose(fit.parameters[copy], parameters, rtol=1e-6, atol=1e-9)
+            chi2 = residuals @ np.linalg.solve(given[copy], residuals)
+            assert fit.chi2[copy] == pytest.approx(chi2, rel=1e-6)
+
+
+def test_generalised_of_independent_values_is_weighted():
+    for seed in range(50):
+        design, values, errors = problem(seed)
+        diagonal = errors[:, :, np.newaxis] ** 2 * np.eye(design.shape[0])
+        found = generalised_least_squares(design, values, diagonal)
+        expected = weighted_least_squares(design, values, errors)
+        for name in ("parameters", "gain", "covariance", "chi2"):
+            np.testing.assert_allclose(getattr(found, name), getattr(expected, name), rtol=1e-9, atol=1e-12)
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3])
+def test_generalised_covariance_is_that_of_repeated_measurements(seed):
+    generator = np.random.default_rng(seed)
+    design, _, errors = problem(seed)
+    given = covariances(generator, errors[:1])[0]
+    truth = generator.normal(size=design.shape[1])
+    noise = generator.multivariate_normal(np.zeros(len(design)), given, size=4000)
+    fit = generalised_least_squares(design, design @ truth + noise, given)
+    pulls = (fit.parameters - truth) / np.sqrt(np.diagonal(fit.covariance))
+    assert np.abs(pulls.mean(axis=0)).max() < 5 / np.sqrt(4000)
+    assert np.abs(pulls.var(axis=0) - 1).max() < 5 * np.sqrt(2 / 4000)
+    degrees = len(design) - design.shape[1]
+    assert abs(fit.chi2.mean() - degrees) < 5 * np.sqrt(2 * degrees / 4000)
+
+
+def test_a_covariance_that_is_none_is_refused():
+    with pytest.raises(np.linalg.LinAlgError):
+        generalised_least_squares(np.ones((2, 1)), np.zeros(2), np.array([[1.0, 2], [2, 1]]))

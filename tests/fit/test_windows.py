@@ -54,6 +54,25 @@ def test_rules_grow_at_both_ends_and_respect_the_smallest_rank():
     assert str(rule) == "0.25 * n^0.5 .. 0.5 * n^0.75"
 
 
+@given(st.floats(1e-3, 1e3), st.floats(0.01, 1), st.floats(1e-3, 1e3), st.floats(0.01, 1))
+def test_rules_survive_their_text(low, low_power, high, high_power):
+    rule = WindowRule(Growth(low, low_power), Growth(high, high_power))
+    assert WindowRule.parse(str(rule)) == rule
+
+
+@pytest.mark.parametrize("text", ["", "n^0.5", "n^0.5..n^0.75", "n^0.5 .. ", "n^0.5 .. n^2", "a .. n^0.5"])
+def test_rules_that_are_refused(text):
+    with pytest.raises(ValueError, match=r"^"):
+        WindowRule.parse(text)
+
+
+def test_the_middle_of_a_window_in_log_rank():
+    # of 0.25 · 100 and 0.5 · 1000 it is √(25 · 500)
+    rule = WindowRule(Growth(0.25, 0.5), Growth(0.5, 0.75))
+    assert np.exp(rule.log_rank(10_000)) == pytest.approx(np.sqrt(25 * 500))
+    assert np.exp(rule.log_rank(4)) == pytest.approx(2)  # at least
+
+
 # Ends as they arise: real numbers from 1 on, often whole, sometimes whole but for rounding.
 ends = st.one_of(
     st.floats(1, 2000),
@@ -149,6 +168,16 @@ def test_averages_over_bins(bins, spare, seed):
         ranks = range(bins.edges[b], bins.edges[b + 1])
         plain = sum(by_rank[..., rank - 1] for rank in ranks) / len(ranks)
         np.testing.assert_allclose(found[..., b], plain, rtol=1e-12, atol=1e-14)
+
+
+@settings(max_examples=50, deadline=None)
+@given(rising_edges)
+def test_a_function_of_rank_is_averaged_as_data_are(bins):
+    by_rank = np.log(np.arange(1, bins.last + 1))
+    np.testing.assert_array_equal(bins.of(np.log), bins.average(by_rank))
+    for b, rank in enumerate(bins.ranks):
+        ranks = range(bins.edges[b], bins.edges[b + 1])
+        assert rank == pytest.approx(np.prod([r ** (1 / len(ranks)) for r in ranks]), rel=1e-12)
 
 
 @given(st.integers(1, 3000), st.integers(1, 60))

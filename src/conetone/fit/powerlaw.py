@@ -1,23 +1,27 @@
-"""Exponents of binned spectra of one size: every window and model, with delete-one jackknife copies."""
+"""Exponents of one size from logs along a rank axis: every window and model, with delete-one copies."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
-from conetone.fit.leastsquares import weighted_least_squares
-from conetone.fit.models import EXPONENT, MODELS, Model
-from conetone.fit.ranking import BinnedLogs
+from conetone.fit.leastsquares import LinearFit, generalised_least_squares, weighted_least_squares
+from conetone.fit.logs import RankedLogs
+from conetone.fit.models import EXPONENT, Model
+from conetone.fit.shrinkage import shrunk_correlation_copies
 from conetone.fit.windows import Window
 
 Floats = NDArray[np.float64]
+Weighting = Literal["diagonal", "correlated"]
 
-# Bins that a fit must have beyond its parameters, so that its misfit can be judged.
+# Points that a fit must have beyond its parameters, so that its misfit can be judged.
 SPARE_BINS = 2
 # Standard errors of log λ are not believed below this; exactly regular orders have none at all.
 SMALLEST_ERROR = 1e-9
-# Halvings of the bracket in which the scatter is sought: to 1e−9 of its upper end.
-HALVINGS = 30
+# Newton's steps to the scatter, which settles in about six.
+MOST_STEPS, SETTLED = 50, 1e-10
 
 
 @dataclass(frozen=True)
@@ -25,7 +29,7 @@ class Estimates:
     """One exponent estimated again and again: entry 0 from all replicates, entry 1 + i without replicate i.
 
     `exponent`, `statistical` (standard error from the scatter of replicates), `misfit` (further error from
-    steps that no model describes) and `chi2` (diagonal, steps included) have shape (1 + replicates,).
+    steps that no model describes) and `chi2` (steps included) have shape (1 + replicates,).
     """
 
     exponent: Floats
@@ -38,8 +42,8 @@ class Estimates:
 class PowerLawFit:
     """A model fitted in a window: its estimates, and what model averaging needs to know of it.
 
-    `parameters` of the fit to all replicates; `fitted` is the model at every bin of the data vector
-    (NaN outside the window); `bins_cut` counts the bins of the shared data vector outside the window.
+    `parameters` of the fit to all replicates; `fitted` is the model at every point of the data vector
+    (NaN outside the window); `bins_cut` counts the points of the shared data vector outside the window.
     """
 
     estimates: Estimates
@@ -51,62 +55,99 @@ class PowerLawFit:
 
 @dataclass(frozen=True)
 class DataVector:
-    """Binned logs of one size, ready to be fitted in any window.
+    """Logs of one size along a rank axis, ready to be fitted in any window.
 
-    `means` and `errors` have shape (1 + replicates, bins): of all replicates, then without each in turn.
-    `scatter`, shape (1 + replicates,), is the standard deviation τ of log λ about a power law over all bins
-    that the errors do not explain: multiplets of a symmetric region come in steps. It is common to all fits,
-    so that they share one data vector and one measure of its noise.
+    `means` and `errors` have shape (1 + replicates, points): of all replicates, then without each in turn;
+    `correlations` (1 + replicates, points, points), shrunk, if fits shall weigh by them, else None.
+    `scatter`, shape (1 + replicates,), is the standard deviation τ of log λ about the best of the models,
+    over all points, that the errors do not explain: multiplets of a symmetric region come in steps. It is
+    common to all fits, so that they share one data vector and one measure of its noise.
     """
 
-    data: BinnedLogs
+    data: RankedLogs
+    size: float
     means: Floats
     errors: Floats
     scatter: Floats
+    correlations: Floats | None = None
 
     @classmethod
-    def of(cls, data: BinnedLogs) -> "DataVector":
-        """Delete-one means, errors and scatter; at least two replicates and four bins are needed.
+    def of(
+        cls, data: RankedLogs, size: float, models: Sequence[Model], weighting: Weighting = "diagonal"
+    ) -> "DataVector":
+        """Delete-one means, errors and scatter; at least two replicates and four points are needed.
 
         Of two replicates the copies have no scatter of their own and reuse the errors of both.
         """
         means, errors = _delete_one_moments(data.values)
         errors = np.maximum(errors, SMALLEST_ERROR)
-        return cls(
-            data, means, errors, _unexplained_scatter(MODELS["power"].design(data.bins), means, errors)
-        )
+        correlations = shrunk_correlation_copies(data.values) if weighting == "correlated" else None
+        fittable = [model for model in models if data.axis.count > model.parameters]
+        scatters = [_unexplained_scatter(model, data, size, means, errors) for model in fittable]
+        return cls(data, size, means, errors, np.min(scatters, axis=0), correlations)
 
 
 def fit_power_law(vector: DataVector, model: Model, window: Window) -> PowerLawFit | None:
-    """Fit a model to the bins inside a window; None if there are too few bins for it.
+    """Fit a model to the points inside a window; None if there are too few of them for it.
 
     Replicates are the unit of resampling: eigenvalues of one matrix are strongly correlated, so the
     statistical error of the exponent is the scatter, over replicates, of the same linear functional of
-    their binned logs. The misfit is what the unexplained scatter τ, independent from bin to bin, adds.
+    their logs. The misfit is what the unexplained scatter τ adds, or that about this fit if it is larger,
+    independent from point to point.
     """
     data = vector.data
-    inside = data.bins.inside(window)
-    bins = inside.stop - inside.start
-    if bins < model.parameters + SPARE_BINS:
+    inside = data.axis.inside(window)
+    points = inside.stop - inside.start
+    if points < model.parameters + SPARE_BINS:
         return None
-    design = model.design(data.bins)[inside]
-    errors = np.hypot(vector.errors[:, inside], vector.scatter[:, np.newaxis])
-    fit = weighted_least_squares(*_with_priors(model, design, vector.means[:, inside], errors))
-    gain = fit.gain[:, EXPONENT, :bins]
-    fitted = np.full(data.bins.count, np.nan)
-    fitted[inside] = design @ fit.parameters[0]
+    design = model.design(data.axis, vector.size)[inside]
+    offset = model.offset_on(data.axis, vector.size)[inside]
+    fit = _fit(vector, model, design, offset, inside)
+    gain = fit.gain[:, EXPONENT, :points]
+    fitted = np.full(data.axis.count, np.nan)
+    fitted[inside] = design @ fit.parameters[0] + offset
     return PowerLawFit(
         Estimates(
             exponent=fit.parameters[:, EXPONENT],
             statistical=_delete_one_errors_of_projections(gain, data.values[:, inside]),
-            misfit=vector.scatter * np.linalg.norm(gain, axis=-1),
+            misfit=np.maximum(vector.scatter, _own_scatter(vector, design, offset, fit, inside))
+            * np.linalg.norm(gain, axis=-1),
             chi2=fit.chi2,
         ),
         parameters=fit.parameters[0],
         fitted=fitted,
-        degrees=bins + len(model.prior_widths) - model.parameters,
-        bins_cut=data.bins.count - bins,
+        degrees=points + len(model.prior_widths) - model.parameters,
+        bins_cut=data.axis.count - points,
     )
+
+
+def _fit(vector: DataVector, model: Model, design: Floats, offset: Floats, inside: slice) -> LinearFit:
+    values, errors = vector.means[:, inside] - offset, vector.errors[:, inside]
+    scatter = vector.scatter[:, np.newaxis]
+    if vector.correlations is None:
+        return weighted_least_squares(*_with_priors(model, design, values, np.hypot(errors, scatter)))
+    covariance = vector.correlations[:, inside, inside] * errors[:, :, np.newaxis] * errors[:, np.newaxis, :]
+    diagonal = np.arange(values.shape[1])
+    covariance[:, diagonal, diagonal] += scatter**2
+    design, values, errors = _with_priors(model, design, values, np.ones_like(values))
+    whole = np.zeros((*errors.shape, errors.shape[1]))
+    every = np.arange(errors.shape[1])
+    whole[:, every, every] = errors**2
+    whole[:, : len(diagonal), : len(diagonal)] = covariance
+    return generalised_least_squares(design, values, whole)
+
+
+def _own_scatter(
+    vector: DataVector, design: Floats, offset: Floats, fit: LinearFit, inside: slice
+) -> Floats:
+    """Scatter of the means about a fit, shape (1 + replicates,).
+
+    Noise common to all ranks makes standard errors large and hides from τ what a fit leaves over, while it does
+    not enter the scatter of exponents: residuals tell of a misfit that χ² does not see.
+    """
+    residuals = vector.means[:, inside] - offset - fit.parameters @ design.T
+    degrees = design.shape[0] - design.shape[1]
+    return np.sqrt((residuals**2).sum(axis=-1) / degrees)
 
 
 def _with_priors(
@@ -122,26 +163,31 @@ def _with_priors(
     )
 
 
-def _unexplained_scatter(design: Floats, means: Floats, errors: Floats) -> Floats:
-    """τ such that χ² with variances error² + τ² equals its degrees of freedom; 0 where it is below at τ = 0.
+def _unexplained_scatter(
+    model: Model, data: RankedLogs, size: float, means: Floats, errors: Floats
+) -> Floats:
+    """τ such that χ² of a model over all points, with variances error² + τ², equals its degrees of freedom.
 
-    The estimator of Paule & Mandel (1982), by bisection; means and errors (copies, bins), result (copies,).
+    0 where χ² is below at τ = 0. The estimator of Paule & Mandel (1982); means and errors
+    (copies, points), result (copies,).
     """
-    degrees = len(design) - design.shape[1]
+    design, values = model.design(data.axis, size), means - model.offset_on(data.axis, size)
+    degrees = data.axis.count - model.parameters + len(model.prior_widths)
 
-    def excess(variance: Floats) -> Floats:
+    variance = np.zeros(len(means))
+    for _ in range(MOST_STEPS):
         total = np.sqrt(errors**2 + variance[:, np.newaxis])
-        return np.asarray(weighted_least_squares(design, means, total).chi2 - degrees)
-
-    low = np.zeros(len(means))
-    # unweighted residuals bound τ²: with it alone, χ² cannot exceed its degrees of freedom
-    high = weighted_least_squares(design, means, np.ones_like(means)).chi2 / degrees
-    explained = excess(low) <= 0
-    for _ in range(HALVINGS):
-        middle = (low + high) / 2
-        above = excess(middle) > 0
-        low, high = np.where(above, middle, low), np.where(above, high, middle)
-    return np.where(explained, 0.0, np.sqrt((low + high) / 2))
+        fit = weighted_least_squares(*_with_priors(model, design, values, total))
+        residuals = values - fit.parameters @ design.T
+        falling = (residuals**2 / total**4).sum(axis=-1)  # −∂χ²/∂τ², parameters being stationary
+        # Newton's step for 1/χ² = 1/ν, which is nearly linear in τ², never past 0
+        step = fit.chi2 * (fit.chi2 / degrees - 1) / np.where(falling > 0, falling, np.inf)
+        moved = np.maximum(variance + step, 0)
+        settled = np.abs(moved - variance) <= SETTLED * moved
+        variance = moved
+        if settled.all():
+            break
+    return np.sqrt(variance)
 
 
 def _delete_one_moments(values: Floats) -> tuple[Floats, Floats]:

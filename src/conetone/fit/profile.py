@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from conetone.fit.ranking import Floats, bin_logs, standard_error
+from conetone.fit.logs import Floats, bin_logs, standard_error
 from conetone.fit.windows import bins_of_spectrum
 
 
@@ -29,7 +29,7 @@ def profile(spectra: list[NDArray[np.float64]], bins: int) -> Profile:
     """The profile of falling spectra of one size, over the ranks they all have."""
     shared = min(len(spectrum) for spectrum in spectra)
     data = bin_logs(spectra, bins_of_spectrum(shared, bins))
-    log_rank = data.bins.average(np.log(np.arange(1, shared + 1)))
+    log_rank = data.axis.of(np.log)
     slopes = -np.diff(data.values, axis=1) / np.diff(log_rank)
     return Profile(
         rank=np.exp(log_rank),

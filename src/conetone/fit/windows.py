@@ -1,9 +1,10 @@
 """Windows of rank that mean the same at every size, and the bins they are made of."""
 
 import re
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -69,8 +70,36 @@ class WindowRule:
         """The window at one size, its lower end not below `smallest_rank`."""
         return Window(max(self.first.at(size), float(smallest_rank)), self.last.at(size))
 
+    def log_rank(self, size: int) -> float:
+        """Log of the middle rank at one size, halfway between the ends in log rank; at least log 2."""
+        return max(float(np.log(self.first.at(size) * self.last.at(size)) / 2), float(np.log(2)))
+
     def __str__(self) -> str:
         return f"{self.first} .. {self.last}"
+
+    @classmethod
+    def parse(cls, text: str) -> "WindowRule":
+        """Inverse of `str`; raises ValueError for anything else."""
+        first, _, last = text.partition(" .. ")
+        return cls(Growth.parse(first), Growth.parse(last))
+
+
+class RankAxis(Protocol):
+    """Where the logs of a spectrum stand along the ranks: in bins of rank, or at smooth ranks."""
+
+    @property
+    def count(self) -> int:
+        """Number of points or bins."""
+
+    @property
+    def ranks(self) -> Floats:
+        """The rank of each, for the eye; shape (count,)."""
+
+    def of(self, by_rank: Callable[[Floats], Floats]) -> Floats:
+        """A function of rank as this axis sees it, shape (count,)."""
+
+    def inside(self, window: Window) -> slice:
+        """The points or bins that make up a window."""
 
 
 @dataclass(frozen=True)
@@ -92,6 +121,15 @@ class RankBins:
     def last(self) -> int:
         """Largest rank in any bin."""
         return self.edges[-1] - 1
+
+    @property
+    def ranks(self) -> Floats:
+        """Geometric mean rank of each bin, shape (bins,)."""
+        return np.asarray(np.exp(self.of(np.log)))
+
+    def of(self, by_rank: Callable[[Floats], Floats]) -> Floats:
+        """A function of rank averaged over each bin, as the data are, shape (bins,)."""
+        return self.average(by_rank(np.arange(1, self.last + 1, dtype=np.float64)))
 
     def average(self, by_rank: Floats) -> Floats:
         """Average a quantity given for ranks 1 … last over each bin; last axis ranks, then bins."""
