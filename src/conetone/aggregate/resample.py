@@ -34,11 +34,15 @@ class Measured:
 
 @dataclass(frozen=True)
 class Candidate:
-    """One window and model of a series: its estimates by size (None where it has no fit)."""
+    """One window and model of a series: its estimates by size (None where it has no fit).
+
+    `log_rank`: log of the middle rank of the window at the largest size, ∞ where no logarithm can hide.
+    """
 
     parameters: int
     estimates: Sequence[Estimates | None]
     bins_cut: Sequence[int]
+    log_rank: float = np.inf
 
 
 def stack_copies(
@@ -66,17 +70,20 @@ def stack_copies(
 
 
 def measure(averages: Averages, replicates: Sequence[int]) -> Measured:
-    """Errors of averages whose copies are laid out by `stack_copies`: sizes are independent samples."""
+    """Errors of averages whose copies are laid out by `stack_copies`."""
     copies = averages.value[1:]
-    variance = np.zeros(averages.value.shape[1])
-    first = 0
-    for count in replicates:
-        if count > 1:
-            variance += jackknife_variance(copies[first : first + count])
-        first += count
     return Measured(
         value=averages.value[0],
-        statistical=np.sqrt(variance),
+        statistical=np.sqrt(variance_of_copies(copies, replicates)),
         systematic=np.sqrt(averages.hidden_variance[0]),
         copies=copies,
     )
+
+
+def variance_of_copies(copies: Floats, replicates: Sequence[int]) -> Floats:
+    """Jackknife variance of (copies, …) in order of size, then replicate: sizes are independent samples."""
+    variance = np.zeros(copies.shape[1:])
+    for part in np.split(copies, np.cumsum(replicates)[:-1]):
+        if len(part) > 1:
+            variance += jackknife_variance(part)
+    return variance
