@@ -22,7 +22,7 @@ from conetone.records.files import (
     write_table,
 )
 from conetone.records.provenance import blas_threads, software
-from conetone.records.tables import ORDERS, SPECTRA, TABLES, VERSION
+from conetone.records.tables import ORDERS, SPECTRA, TABLES, VERSIONS
 from conetone.sprinkle.catalogue import PARAMETER_NAMES
 from conetone.sprinkle.order import Order
 from conetone.sprinkle.relation import PackedRelation
@@ -380,7 +380,7 @@ def test_footer(tmp_path):
     footer = read_footer(path)
     data = ORDERS.build(order_rows())
     assert footer["table"] == "orders"
-    assert footer["version"] == VERSION
+    assert footer["version"] == VERSIONS["sprinkle"]
     assert footer["request"] == '{"stage":"sprinkle"}'
     assert footer["inputs"] == "ab12"
     assert footer["content"] == content_digest(data.select(ORDERS.content_columns))

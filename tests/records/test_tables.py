@@ -4,11 +4,30 @@ import pyarrow as pa
 import pytest
 
 from conetone.errors import TableError
-from conetone.records.tables import EXPONENTS, FITS, ORDERS, SPECTRA, TABLES, Column, Table
+from conetone.records.tables import (
+    AMPLITUDES,
+    BINS,
+    CUTOFFS,
+    DIAGNOSTICS,
+    DIFFERENCES,
+    EXPONENTS,
+    FITS,
+    INJECTIONS,
+    ORDERS,
+    SERIES_KEYS,
+    SPECTRA,
+    TABLES,
+    VERSIONS,
+    Column,
+    Table,
+)
 from conetone.sprinkle.catalogue import PARAMETER_NAMES
+from conetone.sweep.paths import CLOSING_TABLES, PIECE_TABLES
+from conetone.sweep.requests import Request
 
 NUMBERS = Table(
     "numbers",
+    "fit",
     (
         Column("name", pa.string(), "a name"),
         Column("value", pa.float64(), "a value", "s", nullable=True),
@@ -68,6 +87,9 @@ def test_only_time_and_memory_are_measured(table):
 @pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))
 def test_key_columns(table):
     columns = {column.name: column for column in table.columns}
+    if table is DIFFERENCES:  # of two series, whose keys stand in `exponents`
+        assert {"series", "other_series"} < set(columns)
+        return
     assert not columns["ensemble"].nullable
     for name in ("dimension", *PARAMETER_NAMES):
         assert columns[name].nullable  # an ensemble need not have it
@@ -75,7 +97,7 @@ def test_key_columns(table):
 
 
 def test_failures_have_rows_with_a_reason():
-    for table in (ORDERS, SPECTRA, FITS, EXPONENTS):
+    for table in (ORDERS, SPECTRA, FITS, EXPONENTS, INJECTIONS):
         columns = {column.name: column for column in table.columns}
         assert not columns["status"].nullable
         assert columns["reason"].nullable
@@ -86,3 +108,39 @@ def test_failures_have_rows_with_a_reason():
                 assert column.nullable
             if column.name in ("point", "size", "replicate", "count", "matrix", "part"):
                 assert not column.nullable
+
+
+def test_a_version_belongs_to_a_stage(monkeypatch):
+    """Every stage that has requests has a version, and a new one makes the tables of that stage stale alone."""
+    stages = {request.stage() for request in Request.__subclasses__()}
+    assert set(VERSIONS) == stages
+    assert {table.stage for table in TABLES.values()} == stages - {"figure"}
+    before = {name: table.version for name, table in TABLES.items()}
+    monkeypatch.setitem(VERSIONS, "fit", 99)
+    after = {name: table.version for name, table in TABLES.items()}
+    assert {name for name in TABLES if before[name] != after[name]} == {"fits", "bins", "profiles", "cutoffs"}
+
+
+def test_every_table_of_a_series_begins_with_its_keys():
+    keys = [column.name for column in SERIES_KEYS]
+    for name in {*PIECE_TABLES, *CLOSING_TABLES} - {"differences"}:
+        assert [column.name for column in TABLES[name].columns[: len(keys)]] == keys
+
+
+def test_what_has_an_estimator_says_which():
+    for table in (FITS, BINS, EXPONENTS, INJECTIONS):
+        (estimator,) = [column for column in table.columns if column.name == "estimator"]
+        assert not estimator.nullable
+        assert "smooth-count" in estimator.meaning or table is INJECTIONS
+
+
+def test_what_has_no_value_may_be_null_and_nothing_else():
+    """Rows of amplitudes and differences exist only where there is a number; those of diagnostics have one."""
+    for table, nullable in (
+        (CUTOFFS, {"dimension"}),
+        (AMPLITUDES, {"dimension", "slope_expected", "law", "law_standing", "law_source", "deviation"}),
+        (DIAGNOSTICS, {"dimension", "exponent", "statistical", "systematic", "quality"}),
+        (DIFFERENCES, set()),
+    ):
+        found = {column.name for column in table.columns if column.nullable}
+        assert found - set(PARAMETER_NAMES) == nullable - set(PARAMETER_NAMES), table.name

@@ -6,6 +6,10 @@ from typing import Any
 
 from hypothesis import strategies as st
 
+from conetone.fit.models import MODELS
+from conetone.fit.size import ESTIMATORS
+from conetone.operators.catalogue import PARTS
+
 CLONE = Path(__file__).parents[2]
 VALID = sorted((CLONE / "tests/sweeps/valid").glob("*.yaml"))
 INVALID = sorted((CLONE / "tests/sweeps/invalid").glob("*.yaml"))
@@ -50,7 +54,7 @@ def complete_sweep() -> dict[str, Any]:
         "count": "poisson",
         "operators": [
             {"matrix": "causal", "part": ["symmetric", "antisymmetric"]},
-            {"matrix": "link", "part": "symmetric"},
+            {"matrix": "link", "part": ["symmetric-positive", "symmetric"]},
         ],
         "spectrum": {"extent": "auto", "count": 40, "tolerance": 1e-8, "solver": "two-stage"},
         "windows": {
@@ -59,6 +63,8 @@ def complete_sweep() -> dict[str, Any]:
             "smallest_rank": 2,
             "bins": 10,
             "models": ["power", "top-correction"],
+            "estimator": "rank-bins",
+            "weights": "correlated",
         },
         "extrapolation": {"omegas": [0.5, 1.0], "most_sizes_cut": 1},
     }
@@ -72,7 +78,8 @@ SCALARS = (
     | st.floats()
     | st.text(max_size=12)
     | st.sampled_from(
-        ["", "symmetric", "link", "fixed", "full", "power", "minkowski-box", "n^0.5", "2 * n^1", "1e-3",
+        ["", "symmetric", "symmetric-negative", "singular", "link",
+         "fixed", "full", "power", "logarithm", "knee", "smooth-count", "diagonal", "minkowski-box", "n^0.5", "2 * n^1", "1e-3",
          "../x", "64", -1, 0, 1, 2, 3, 64, 0.5, 1.0, 10**7, 10**400,
          "\ud800", "a\nb", "9" * 400 + " * n^0.5"]
     )
@@ -169,7 +176,7 @@ def varied_sweeps(draw: st.DrawFn) -> dict[str, Any]:
                     st.fixed_dictionaries(
                         {
                             "matrix": st.sampled_from(["causal", "link"]),
-                            "part": _one_or_many(st.sampled_from(["symmetric", "antisymmetric"]), 2),
+                            "part": _one_or_many(st.sampled_from(PARTS), len(PARTS)),
                         }
                     ),
                     min_size=1,
@@ -186,7 +193,9 @@ def varied_sweeps(draw: st.DrawFn) -> dict[str, Any]:
                         "to": _one_or_many(_UPPER_ENDS),
                         "smallest_rank": st.integers(1, 5),
                         "bins": st.integers(4, 100),
-                        "models": _one_or_many(st.sampled_from(["power", "top-correction"]), 2),
+                        "models": _one_or_many(st.sampled_from(sorted(MODELS)), len(MODELS)),
+                        "estimator": st.sampled_from(ESTIMATORS),
+                        "weights": st.sampled_from(["diagonal", "correlated"]),
                     },
                 ),
                 "extrapolation": st.fixed_dictionaries(

@@ -4,6 +4,7 @@ import re
 import subprocess
 import sys
 import time
+from dataclasses import replace
 from itertools import product
 from pathlib import Path
 from typing import Any
@@ -13,12 +14,14 @@ import yaml
 from hypothesis import given, settings
 
 from conetone.errors import SweepError
+from conetone.fit.models import MODELS
+from conetone.fit.size import WindowSettings
 from conetone.fit.windows import Growth, WindowRule
 from conetone.sweep.cost import full_mib
 from conetone.sweep.definition import Sweep, load_sweep, resolve_sweep
 from conetone.sweep.points import EnsembleChoice, OperatorChoice
 from conetone.sweep.reading import LARGEST_FILE, read_yaml
-from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings
 from tests.sweep.corpus import (
     CLONE,
     INVALID,
@@ -39,7 +42,9 @@ DEFAULT_WINDOWS = WindowSettings(
     (WindowRule(LOW, HIGH), WindowRule(LOW, HIGHER), WindowRule(MIDDLE, HIGH), WindowRule(MIDDLE, HIGHER)),
     smallest_rank=2,
     bins=12,
-    models=("power", "top-correction"),
+    models=(),  # which theory names for each series
+    estimator="smooth-count",
+    weighting="diagonal",
 )
 FULL = SpectrumSettings("full", None, None, "auto")
 DEFAULT_EXTRAPOLATION = ExtrapolationSettings((0.5, 0.75, 1.0), most_sizes_cut=2)
@@ -122,7 +127,7 @@ RESOLVED = {
                 WindowRule(Growth(1, 0.5), Growth(0.5, 0.8)),
                 WindowRule(Growth(1, 0.5), Growth(0.125, 1)),
             ),
-            3, 20, ("top-correction", "power"),
+            3, 20, ("top-correction", "power"), "rank-bins", "correlated",
         ),
         ExtrapolationSettings((0.25, 0.5, 1.0, 2.0, 4.0), 0),
     ),
@@ -131,7 +136,7 @@ RESOLVED = {
         "windows-in-part", 1, (diamond(2),), (64, 96, 128), (2, 2, 2), (CAUSAL_ANTISYMMETRIC,),
         WindowSettings(
             (WindowRule(LOW, Growth(1, 0.75)), WindowRule(MIDDLE, Growth(1, 0.75))),
-            2, 4, ("power", "top-correction"),
+            2, 4, (),
         ),
     ),
     "block-style-with-comments": sweep(
@@ -139,22 +144,46 @@ RESOLVED = {
     ),
     "quoted-texts": sweep(
         "2026-12-01", 1, (LAYERED,), (64, 96, 128), (2, 2, 2), (CAUSAL_SYMMETRIC,),
-        WindowSettings((WindowRule(Growth(1, 0.25), Growth(1, 0.75)),), 2, 12, ("power", "top-correction")),
+        WindowSettings((WindowRule(Growth(1, 0.25), Growth(1, 0.75)),), 2, 12, ()),
     ),
     "byte-order-mark-and-carriage-returns": sweep(
         "from-another-system", 0, (LAYERED,), (64, 96, 128), (2, 2, 2), (CAUSAL_SYMMETRIC,)
     ),
     "leading-spectra": sweep(
         "leading", 1, (diamond(2),), (512, 724, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        windows=replace(DEFAULT_WINDOWS, estimator="rank-bins"),
         spectrum=SpectrumSettings("leading", 63, 1e-9, "auto"),
+    ),
+    "leading-for-a-smooth-count": sweep(
+        "leading-smooth", 1, (diamond(2),), (512, 724, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        spectrum=SpectrumSettings("leading", 191, 1e-9, "auto"),
     ),
     "leading-with-tolerance": sweep(
         "leading-tolerance", 1, (diamond(2),), (256, 512, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
-        spectrum=SpectrumSettings("leading", 100, 1e-10, "auto"),
+        spectrum=SpectrumSettings("leading", 200, 1e-10, "auto"),
     ),
     "full-by-lapack": sweep(
         "full-by-lapack", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
         spectrum=SpectrumSettings("full", None, None, "lapack"),
+    ),
+    "every-model": sweep(
+        "every-model", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        replace(DEFAULT_WINDOWS, models=tuple(MODELS)),
+    ),
+    "one-model-with-a-logarithm": sweep(
+        "one-logarithm", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (OperatorChoice("causal", "singular"),),
+        replace(DEFAULT_WINDOWS, models=("logarithm",)),
+    ),
+    "bins-of-rank-are-quoted": sweep(
+        "bins-of-rank", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        replace(DEFAULT_WINDOWS, estimator="rank-bins"),
+    ),
+    "smooth-count-is-quoted": sweep(
+        "smooth-count", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,)
+    ),
+    "weights-with-correlations": sweep(
+        "correlated", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
+        replace(DEFAULT_WINDOWS, weighting="correlated"),
     ),
     "one-size": sweep("one-size", 1, (diamond(2),), (1000,), (50,), (CAUSAL_ANTISYMMETRIC,)),
 }  # fmt: skip
@@ -231,6 +260,11 @@ def test_invalid_files_are_refused_with_place_found_and_allowed(path: Path) -> N
         ("ensemble-misspelt", "did you mean minkowski-diamond?"),
         ("part-misspelt-in-list", "did you mean antisymmetric?"),
         ("model-misspelt-in-list", "did you mean top-correction?"),
+        ("model-of-the-logarithm-misspelt", "did you mean logarithm?"),
+        ("models-null", "leave the field out for its default"),
+        ("estimator-misspelt", "did you mean smooth-count?"),
+        ("estimator-null", "leave the field out for its default"),
+        ("weights-misspelt", "did you mean correlated?"),
         ("count-misspelt", "did you mean poisson?"),
         ("count-null", "leave the field out for its default"),
         ("windows-null", "leave the field out for its default"),
@@ -250,6 +284,10 @@ def test_invalid_files_are_refused_with_place_found_and_allowed(path: Path) -> N
         ("leading-with-solver", "remove it: solvers are for full spectra"),
         ("leading-without-count", "add this field, or write extent: auto"),
         ("leading-count-below-windows", "end the windows earlier, or ask for more"),
+        (
+            "leading-count-below-smooth-count",
+            "end the windows earlier, or ask for more; windows.estimator: rank-bins takes 22",
+        ),
         ("leading-count-null", "leave the field out for its default"),
         ("tolerance-read-as-text", "write 1.0e-9"),
         ("solver-misspelt", "did you mean two-stage?"),
@@ -340,11 +378,16 @@ def test_leading_spectra_fit_where_full_ones_do_not(monkeypatch: pytest.MonkeyPa
     values.update(sizes=100_000, replicates=3)
     del values["windows"]
     values["ensembles"] = [{"ensemble": "minkowski-diamond", "dimension": [2, 4]}]
+    values["windows"] = {"estimator": "rank-bins"}
     values["spectrum"] = {"extent": "auto"}
     (spectrum,) = resolve_sweep(values).spectra
     assert (spectrum.extent, spectrum.tolerance) == ("leading", 1e-9)
     # 0.35 n^0.75 = 1968.2 with its end excluded, 1/16 more, in eights
     assert spectrum.count == 2096
+    values["windows"] = {"to": "0.35 * n^0.6"}
+    (spectrum,) = resolve_sweep(values).spectra
+    # 0.35 n^0.6 = 350, 3.3 times as many for the smooth count, in eights
+    assert (spectrum.extent, spectrum.count) == ("leading", 1160)
     values["spectrum"] = {"extent": "full"}
     assert "whose full spectrum needs 74" in fault_of(values).found
     # fewer than 80,096 elements: a full computation, of which the ends are kept
@@ -355,22 +398,29 @@ def test_leading_spectra_fit_where_full_ones_do_not(monkeypatch: pytest.MonkeyPa
 
 def test_auto_takes_the_quicker_one_that_the_windows_allow() -> None:
     values = complete_sweep()
-    values.update(sizes=[64, 512, 2048, 8192], replicates=1, windows={"to": "0.5 * n^0.5"})
+    values.update(sizes=[64, 512, 2048, 8192], replicates=1)
+    values["windows"] = {"to": "0.5 * n^0.5", "estimator": "rank-bins"}
     values["spectrum"] = {"extent": "auto", "solver": "two-stage", "tolerance": 1e-8}
     small, *_, large = resolve_sweep(values).spectra
     assert small == SpectrumSettings("full", None, None, "two-stage")
     assert large == SpectrumSettings("leading", 48, 1e-8, "auto")  # 45.3: 45 ranks, 47.8 with the margin
-    values["windows"] = {"to": "0.5 * n^1"}
+    values["windows"] = {"to": "0.5 * n^1", "estimator": "rank-bins"}
     *_, large = resolve_sweep(values).spectra
     assert large == SpectrumSettings("full", None, None, "two-stage")
     assert large.why == "4352 of each sign are too many: they take 34912 elements"
-    values["windows"] = {"to": "0.5 * n^0.5"}
+    values["windows"] = {"to": "0.5 * n^0.5", "estimator": "rank-bins"}
     values["spectrum"]["count"] = 44
     *_, large = resolve_sweep(values).spectra
     assert large.why == "the windows take 45 ranks, leading ones are 44"
     values["spectrum"]["count"] = 45
     *_, large = resolve_sweep(values).spectra
     assert large == SpectrumSettings("leading", 45, 1e-8, "auto")
+    values["windows"] = {"to": "0.5 * n^0.5", "estimator": "smooth-count"}
+    *_, large = resolve_sweep(values).spectra
+    assert large.why == "the windows take 136 ranks, leading ones are 45"
+    del values["spectrum"]["count"]
+    *_, large = resolve_sweep(values).spectra
+    assert large == SpectrumSettings("leading", 152, 1e-8, "auto")  # 3.3 times 45.3
 
 
 def test_auto_does_not_depend_on_other_sizes_nor_on_this_machine(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -385,14 +435,16 @@ def test_auto_does_not_depend_on_other_sizes_nor_on_this_machine(monkeypatch: py
 
 
 def test_a_leading_count_gives_at_least_the_ranks_of_the_widest_window() -> None:
-    """The fit takes a window whose end, exclusive, is at most one above the ranks that there are."""
+    """In bins a window's end, exclusive, is at most one above the ranks; a smooth count takes three times."""
     values = complete_sweep()
     values["sizes"] = [100, 1000, 10_000]
-    values["windows"] = {"to": ["0.6 * n^0.5", "0.3 * n^0.75", "0.01 * n^1"]}
-    for count in range(280, 310):
+    ends = ["0.6 * n^0.5", "0.3 * n^0.75", "0.01 * n^1"]
+    last = max(Growth.parse(end).at(10_000) for end in ends)
+    for count in [*range(280, 310), *range(880, 920)]:
         values["spectrum"] = {"extent": "leading", "count": count}
-        fits = max(Growth.parse(end).at(10_000) for end in values["windows"]["to"]) <= count + 1
-        assert isinstance(outcome(values), Sweep) is fits
+        for estimator, fits in (("rank-bins", last <= count + 1), ("smooth-count", 3 * last <= count)):
+            values["windows"] = {"to": ends, "estimator": estimator}
+            assert isinstance(outcome(values), Sweep) is fits
 
 
 # What Snakemake may pass on from a file that it read itself, without our strict reading.
@@ -456,7 +508,10 @@ def test_a_sweep_expands_into_every_combination_of_its_values(values: dict[str, 
     resolved = outcome(values)
     if isinstance(resolved, SweepError):
         repeated = len(set(choices)) < len(choices) or len(set(operators)) < len(operators)
-        assert repeated or resolved.place.startswith("windows.") or resolved.place == "spectrum.count"
+        two_stage = values.get("spectrum", {}).get("solver") == "two-stage"
+        singular = "singular" in {operator.part for operator in operators}
+        place = "spectrum.solver" if two_stage and singular else "spectrum.count"
+        assert repeated or resolved.place.startswith("windows.") or resolved.place == place
         return
     sizes = as_list(values["sizes"])
     assert resolved.choices == tuple(choices)
@@ -469,6 +524,9 @@ def test_a_sweep_expands_into_every_combination_of_its_values(values: dict[str, 
     lows = [Growth.parse(text) for text in as_list(windows["from"])] if "from" in windows else [LOW, MIDDLE]
     highs = [Growth.parse(text) for text in as_list(windows["to"])] if "to" in windows else [HIGH, HIGHER]
     assert resolved.windows.rules == tuple(WindowRule(*ends) for ends in product(lows, highs))
+    assert resolved.windows.models == tuple(as_list(windows.get("models", [])))
+    assert resolved.windows.estimator == windows.get("estimator", "smooth-count")
+    assert resolved.windows.weighting == windows.get("weights", "diagonal")
     spectrum = values.get("spectrum", {})
     extent = spectrum.get("extent", "full")
     assert {s.extent for s in resolved.spectra} <= ({"full", "leading"} if extent == "auto" else {extent})
@@ -476,8 +534,9 @@ def test_a_sweep_expands_into_every_combination_of_its_values(values: dict[str, 
         if found.extent == "leading":
             assert found.count == spectrum.get("count", found.count)
             assert found.tolerance == spectrum.get("tolerance", 1e-9)
-            ends = [high.at(size) for high in highs]
-            assert max(ends) <= found.count + 1
+            last = max(high.at(size) for high in highs)
+            bins = resolved.windows.estimator == "rank-bins"
+            assert last - 1 <= found.count if bins else 3 * last <= found.count
         else:
             assert found.solver == spectrum.get("solver", "auto")
     assert resolved.extrapolation.omegas == tuple(

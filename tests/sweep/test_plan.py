@@ -1,5 +1,6 @@
 """Jobs: what a change of the spectrum asks for again, and how many threads a job takes."""
 
+import json
 from typing import Any, get_args
 
 import numpy as np
@@ -7,12 +8,14 @@ import pytest
 
 from conetone.diagonalise import full, leading
 from conetone.errors import RequestError
-from conetone.operators.catalogue import PARTS
+from conetone.fit.models import LOGARITHM_MODELS, POWER_MODELS
+from conetone.operators.catalogue import PARTS, SPECTRAL_PARTS
+from conetone.records.tables import VERSIONS
 from conetone.sweep import cost, fields
 from conetone.sweep.definition import resolve_sweep
-from conetone.sweep.plan import MANY_ELEMENTS, MANY_THREADS, Plan
+from conetone.sweep.plan import MANY_ELEMENTS, MANY_THREADS, STAGES, Plan
 from conetone.sweep.points import EnsembleChoice, OperatorChoice, Point
-from conetone.sweep.requests import DiagonaliseRequest, SprinkleRequest
+from conetone.sweep.requests import DiagonaliseRequest, FitRequest, SprinkleRequest
 from conetone.sweep.settings import Solver, SpectrumSettings
 
 
@@ -24,7 +27,7 @@ def plan(**changes: Any) -> Plan:
         "sizes": [500, 1000, 2000],
         "replicates": 2,
         "operators": [{"matrix": "causal", "part": ["symmetric", "antisymmetric"]}],
-        "windows": {"from": "0.2 * n^0.5", "to": "0.5 * n^0.5"},
+        "windows": {"from": "0.2 * n^0.5", "to": "0.5 * n^0.5", "estimator": "rank-bins"},
     }
     return Plan(resolve_sweep({**values, **changes}))
 
@@ -91,8 +94,63 @@ def test_another_solver_asks_for_full_spectra_again_and_for_no_others() -> None:
 
 def test_requests_come_back_from_their_text() -> None:
     for each in ("full", "auto"):
-        for job in plan(spectrum={"extent": each}).jobs["diagonalise"].values():
-            assert DiagonaliseRequest.parse(job.request.text()) == job.request
+        for job in plan(spectrum={"extent": each}).all_jobs:
+            assert type(job.request).parse(job.request.text()) == job.request
+    for other in ({"models": "knee"}, {"weights": "correlated"}, {"estimator": "smooth-count"}):
+        for job in plan(windows=other).all_jobs:
+            assert type(job.request).parse(job.request.text()) == job.request
+
+
+def test_each_stage_has_a_version_of_its_own() -> None:
+    for job in plan().all_jobs:
+        text = job.request.text()
+        assert json.loads(text)["version"] == VERSIONS[job.stage]
+        with pytest.raises(RequestError, match=f"allowed: {job.stage} of version {VERSIONS[job.stage]}"):
+            type(job.request).parse(text.replace(f'"version":{VERSIONS[job.stage]}', '"version":99'))
+
+
+def test_another_version_of_fits_asks_for_no_spectrum_again(monkeypatch: pytest.MonkeyPatch) -> None:
+    before = {stage: asked(plan(), stage) for stage in STAGES}
+    monkeypatch.setitem(VERSIONS, "fit", VERSIONS["fit"] + 1)
+    after = {stage: asked(plan(), stage) for stage in STAGES}
+    assert {stage for stage in STAGES if before[stage] != after[stage]} == {"fit"}
+
+
+@pytest.mark.parametrize(
+    ("changes", "stages"),
+    [
+        ({"estimator": "smooth-count"}, {"fit", "aggregate"}),
+        ({"weights": "correlated"}, {"fit"}),
+        ({"models": ["power", "top-correction"]}, {"fit"}),
+        ({"models": list(POWER_MODELS)}, set()),
+    ],
+)
+def test_other_fits_ask_for_no_spectrum_again(changes: dict[str, Any], stages: set[str]) -> None:
+    windows = {"from": "0.2 * n^0.5", "to": "0.5 * n^0.5", "estimator": "rank-bins"}
+    operators = [{"matrix": "causal", "part": "antisymmetric"}]
+    before, after = (plan(operators=operators, windows=each) for each in (windows, {**windows, **changes}))
+    assert {stage for stage in STAGES if asked(before, stage) != asked(after, stage)} == stages
+
+
+def test_every_series_has_the_models_that_theory_names_for_it() -> None:
+    """Of C in the plane all parts but the antisymmetric one hold a logarithm (reference/plane.py)."""
+    ensembles = [
+        {"ensemble": "minkowski-diamond", "dimension": [2, 3]},
+        {"ensemble": "minkowski-box", "dimension": 2},
+        {"ensemble": "kleitman-rothschild"},
+    ]
+    operators = [{"matrix": matrix, "part": list(PARTS)} for matrix in ("causal", "link")]
+    jobs = plan(ensembles=ensembles, operators=operators).jobs["fit"].values()
+    assert len(jobs) == 4 * 2 * len(PARTS)
+    for job in jobs:
+        assert isinstance(job.request, FitRequest)
+        series = job.request.series
+        in_plane = dict(series.choice.parameters).get("dimension") == 2
+        log = in_plane and series.operator.matrix == "causal" and series.operator.part != "antisymmetric"
+        assert job.request.windows.models == (LOGARITHM_MODELS if log else POWER_MODELS), series.name
+    for job in plan(ensembles=ensembles, windows={"models": "knee"}).jobs["fit"].values():
+        assert isinstance(job.request, FitRequest)
+        assert job.request.windows.models == ("knee",)
 
 
 @pytest.mark.parametrize(
@@ -127,7 +185,55 @@ def test_only_leading_spectra_of_many_elements_take_threads() -> None:
 def test_forecasts_know_when_the_solver_changes() -> None:
     assert full.CROSSOVER == cost.TWO_STAGE_FROM
     assert get_args(Solver) == full.SOLVERS
-    assert set(cost.LAPACK_SECONDS_AT_1000) == set(PARTS)
+    assert {*cost.LAPACK_SECONDS_AT_1000, "singular"} == set(SPECTRAL_PARTS)
+
+
+def test_parts_of_one_spectrum_are_diagonalised_once() -> None:
+    """And the request is the one of `symmetric` alone, byte by byte, whatever stands beside it."""
+    alone = plan(operators=[{"matrix": "causal", "part": "symmetric"}])
+    every = plan(operators=[{"matrix": "causal", "part": ["symmetric-negative", "symmetric", "singular"]},
+                            {"matrix": "causal", "part": ["symmetric-positive"]}])  # fmt: skip
+    both = asked(every, "diagonalise")
+    assert len(every.series) == 4 * len(alone.series)
+    assert len(both) == 2 * len(asked(alone, "diagonalise"))
+    assert {name: both[name] for name in asked(alone, "diagonalise")} == asked(alone, "diagonalise")
+    signs = plan(operators=[{"matrix": "causal", "part": ["symmetric-negative", "symmetric-positive"]}])
+    assert asked(signs, "diagonalise") == asked(alone, "diagonalise")
+    inputs = {job.inputs for job in signs.jobs["fit"].values()}
+    assert inputs == {job.inputs for job in alone.jobs["fit"].values()}
+    assert signs.jobs["fit"].keys().isdisjoint(alone.jobs["fit"])
+
+
+def test_requests_of_spectra_are_what_they_were() -> None:
+    """Spectra of symmetric and antisymmetric parts that were computed before there were others stay good."""
+    point = Point(EnsembleChoice("minkowski-diamond", (("dimension", 2),), "fixed"), 64)
+    whole = SpectrumSettings("full", None, None, "auto")
+    for part in ("symmetric", "antisymmetric"):
+        assert DiagonaliseRequest(point, "causal", part, whole, 0, 4).text() == (
+            f'{{"matrix":"causal","part":"{part}",'
+            '"point":{"count":"fixed","ensemble":"minkowski-diamond","parameters":{"dimension":2},"size":64},'
+            '"replicates":[0,4],'
+            '"spectrum":{"count":null,"extent":"full","solver":"auto","tolerance":null},'
+            '"stage":"diagonalise","version":2}'
+        )
+
+
+def test_no_spectrum_is_asked_of_a_part_that_shares_one() -> None:
+    text = next(iter(asked(plan(), "diagonalise").values()))
+    for part in ("symmetric-positive", "hermitian"):
+        with pytest.raises(RequestError):
+            DiagonaliseRequest.parse(text.replace('"part":"symmetric"', f'"part":"{part}"'))
+
+
+def test_singular_values_are_forecast_as_a_matrix_twice_as_large() -> None:
+    choice = EnsembleChoice("minkowski-diamond", (("dimension", 4),), "fixed")
+    many = Point(choice, 100_000), SpectrumSettings("leading", 50, 1e-9, "auto")
+    seconds, mib = (
+        [function(many[0], OperatorChoice("causal", part), many[1]) for part in ("symmetric", "singular")]
+        for function in (cost.diagonalise_seconds, cost.diagonalise_mib)
+    )
+    assert 1.8 < seconds[1] / seconds[0] < 2
+    assert mib[1] - mib[0] == pytest.approx(8 * 100_000 * cost.basis_vectors(50) / 2**20)
 
 
 @pytest.mark.parametrize("count", [1, 22, 1000, fields.MOST_LEADING])

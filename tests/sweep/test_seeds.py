@@ -143,7 +143,11 @@ def test_neighbouring_streams_are_independent(root_seed):
 
 
 def test_the_numbers_of_purposes_are_part_of_the_contract():
-    assert {purpose.name: int(purpose) for purpose in Purpose} == {"ELEMENT_COUNT": 0, "SPRINKLING": 1}
+    assert {purpose.name: int(purpose) for purpose in Purpose} == {
+        "ELEMENT_COUNT": 0,
+        "SPRINKLING": 1,
+        "INJECTION": 2,
+    }
 
 
 def test_a_poisson_count_has_a_stream_of_its_own():

@@ -13,7 +13,7 @@ import pyarrow.parquet as pq
 
 from conetone.errors import TableError
 from conetone.records.provenance import software
-from conetone.records.tables import VERSION, Row, Table
+from conetone.records.tables import Row, Table
 
 FOOTER_KEY = b"conetone"
 COMPRESSION_LEVEL = 3
@@ -30,7 +30,7 @@ def write_table(path: Path, table: Table, rows: Sequence[Row], *, request: str, 
     data = table.build(rows)
     footer = {
         "table": table.name,
-        "version": VERSION,
+        "version": table.version,
         "request": request,
         "inputs": inputs,
         "content": content_digest(data.select(table.content_columns)),

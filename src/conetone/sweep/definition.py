@@ -9,6 +9,7 @@ from typing import Any, TypeVar
 from pydantic import ValidationError
 
 from conetone.errors import SweepError
+from conetone.fit.size import WindowSettings
 from conetone.fit.windows import Growth, WindowRule
 from conetone.sprinkle.catalogue import ENSEMBLES
 from conetone.sweep.extents import resolve_spectra
@@ -17,7 +18,7 @@ from conetone.sweep.fields import SweepFields, WindowFields, allowed_in_words, b
 from conetone.sweep.memory import check_memory
 from conetone.sweep.points import Count, EnsembleChoice, OperatorChoice
 from conetone.sweep.reading import THE_FILE, read_yaml, shortened
-from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings
 
 T = TypeVar("T")
 
@@ -62,7 +63,7 @@ def resolve_sweep(values: Any) -> Sweep:
     sizes = _rising(fields.sizes)
     choices, operators = _choices(values, fields), _operators(values, fields)
     windows = _windows(values, fields.windows, sizes[-1])
-    spectra = resolve_spectra(fields.spectrum, sizes, windows)
+    spectra = resolve_spectra(fields.spectrum, sizes, windows, {operator.part for operator in operators})
     check_memory(values, sizes, spectra, choices, operators)
     omegas = _distinct(values, ("extrapolation", "omegas"), fields.extrapolation.omegas)
     return Sweep(
@@ -132,8 +133,8 @@ def _windows(values: Any, fields: WindowFields, largest: int) -> WindowSettings:
     lasts = _growths(values, "to", fields.to)
     rules = tuple(WindowRule(first, last) for first, last in product(firsts, lasts))
     _check_windows(values, firsts, lasts, fields.smallest_rank, largest)
-    models = _distinct(values, ("windows", "models"), fields.models)
-    return WindowSettings(rules, fields.smallest_rank, fields.bins, models)
+    models = _distinct(values, ("windows", "models"), fields.models or ())
+    return WindowSettings(rules, fields.smallest_rank, fields.bins, models, fields.estimator, fields.weights)
 
 
 def _growths(values: Any, end: str, texts: Sequence[str]) -> tuple[Growth, ...]:

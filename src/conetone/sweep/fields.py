@@ -10,7 +10,9 @@ from typing import Annotated, Any, Literal, get_args
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, StringConstraints, create_model
 from pydantic.fields import FieldInfo
 
-from conetone.fit.models import MODELS
+from conetone.fit.logs import Estimator
+from conetone.fit.models import LOGARITHM_MODELS, MODELS, POWER_MODELS
+from conetone.fit.powerlaw import Weighting
 from conetone.fit.windows import GROWTH_PATTERN
 from conetone.operators.catalogue import OPERATORS, PARTS
 from conetone.sprinkle.catalogue import ENSEMBLES, Ensemble, Parameter
@@ -84,9 +86,9 @@ Size = Annotated[int, Field(ge=2, le=LARGEST_SIZE)]
 Replicates = Annotated[int, Field(ge=1, le=MOST_REPLICATES)]
 GrowthText = Annotated[str, StringConstraints(pattern=GROWTH_PATTERN)]
 Omega = Annotated[float, Field(gt=0, le=4)]
-PartName = Literal["symmetric", "antisymmetric"]
+PartName = Literal["symmetric", "symmetric-positive", "symmetric-negative", "antisymmetric", "singular"]
 MatrixName = Literal["causal", "link"]
-ModelName = Literal["power", "top-correction"]
+ModelName = Literal["power", "top-correction", "knee", "top-and-knee", "logarithm", "logarithm-and-knee"]
 ExtentName = Literal["full", "leading", "auto"]
 assert get_args(PartName) == PARTS
 assert get_args(MatrixName) == tuple(OPERATORS)
@@ -123,14 +125,19 @@ for _model in list(ENSEMBLE_FIELDS.values())[1:]:
 
 
 class OperatorFields(Fields):
-    """One matrix of the order, and the self-adjoint parts whose spectra are taken."""
+    """One matrix of the order, and the parts of it whose spectra are taken: a series each.
+
+    `symmetric` and its two signs share one spectrum, which is computed once.
+    """
 
     matrix: MatrixName = described(
         "; ".join(f"`{operator.name}` ({operator.meaning})" for operator in OPERATORS.values()),
         names(OPERATORS),
     )
     part: Annotated[list[PartName], one_or_many(PartName)] = described(
-        "of a matrix M, `symmetric`: M + Mᵀ; `antisymmetric`: i(M − Mᵀ)",
+        "of a matrix M, `symmetric`: M + Mᵀ, magnitudes of both signs; `symmetric-positive` and"
+        " `symmetric-negative`: of one sign; `antisymmetric`: i(M − Mᵀ), whose signs are alike;"
+        " `singular`: singular values of M",
         f"{names(PARTS)}, or a list of them",
         min_length=1,
     )
@@ -150,11 +157,11 @@ class SpectrumFields(Fields):
         default="full",
     )
     count: int = described(
-        "with `leading` or `auto`: eigenvalues of each sign",
+        "with `leading` or `auto`: eigenvalues of each sign, and singular values",
         f"a whole number from 1 to {MOST_LEADING}",
         ge=1,
         le=MOST_LEADING,
-        default_in_words="with `leading` required; with `auto` as many as the windows take and a few more",
+        default_in_words="with `leading` required; with `auto` what the windows and their smooth counts take",
     )
     tolerance: float = described(
         "with `leading` or `auto`: largest residual of an eigenvalue, relative to the largest eigenvalue",
@@ -164,8 +171,8 @@ class SpectrumFields(Fields):
         default_in_words=f"with `leading` and `auto` {_in_yaml(TOLERANCE)}",
     )
     solver: Solver = described(
-        "of full spectra: `two-stage` (ours, through band form); `lapack`, as a check of it;"
-        " `auto`: the quicker at each size",
+        "of full spectra: `two-stage` (ours, through band form; not for singular values); `lapack`, as a"
+        " check of it; `auto`: the quicker at each size",
         names(get_args(Solver)),
         default="auto",
     )
@@ -185,18 +192,18 @@ class WindowFields(Fields):
     model_config = ConfigDict(validate_by_name=False, validate_by_alias=True)
 
     from_: Annotated[list[GrowthText], one_or_many(GrowthText, MOST_ALTERNATIVES)] = described(
-        "lower ends", _growth_allowed("0.25 * n^0.5"),
-        min_length=1, max_length=MOST_ALTERNATIVES, alias="from", default=["0.25 * n^0.5", "0.4 * n^0.5"],
+        "lower ends", _growth_allowed("0.5 * n^0.33"),
+        min_length=1, max_length=MOST_ALTERNATIVES, alias="from", default=["0.5 * n^0.33", "0.7 * n^0.33"],
     )  # fmt: skip
     to: Annotated[list[GrowthText], one_or_many(GrowthText, MOST_ALTERNATIVES)] = described(
-        "upper ends, exclusive", _growth_allowed("0.25 * n^0.75"),
-        min_length=1, max_length=MOST_ALTERNATIVES, default=["0.25 * n^0.75", "0.35 * n^0.75"],
+        "upper ends, exclusive", _growth_allowed("0.5 * n^0.5"),
+        min_length=1, max_length=MOST_ALTERNATIVES, default=["0.5 * n^0.5", "0.7 * n^0.5"],
     )  # fmt: skip
     smallest_rank: int = described(
         "no window begins below this rank", "a whole number from 1 to 1000", ge=1, le=1000, default=2
     )
     bins: int = described(
-        "log-spaced rank bins over all windows together",
+        "log-spaced rank bins, or smooth ranks, over all windows together",
         "a whole number from 4 to 100",
         ge=4,
         le=100,
@@ -204,12 +211,27 @@ class WindowFields(Fields):
     )
     models: Annotated[list[ModelName], one_or_many(ModelName)] = described(
         "; ".join(f"`{model.name}`: {model.meaning}" for model in MODELS.values()),
-        f"{names(MODELS)}, or a list of them", min_length=1, default=list(MODELS),
+        f"{names(MODELS)}, or a list of them", min_length=1,
+        default_in_words=f"{names(POWER_MODELS, 'and')}; {names(LOGARITHM_MODELS, 'and')} for series"
+        " whose law is known to hold a logarithm",
     )  # fmt: skip
+    estimator: Estimator = described(
+        "whose exponent is quoted; the other stands beside it. `smooth-count`: fits cut-offs Λ against the"
+        " smooth count Σ exp(−(Λ/λ)²), which smooths the steps of multiplets away; `rank-bins`: fits log λ"
+        " averaged over bins of rank",
+        names(get_args(Estimator)),
+        default="smooth-count",
+    )
+    weights: Weighting = described(
+        "`diagonal`: points weigh by their standard errors; `correlated`: also by their correlations, shrunk"
+        " after Ledoit and Wolf and estimated again without each replicate",
+        names(get_args(Weighting)),
+        default="diagonal",
+    )
 
 
 class ExtrapolationFields(Fields):
-    """α(n) = α∞ + a n^−ω, averaged over ω and over the number of smallest sizes left out."""
+    """α(n) = α∞ + a n^−ω, and with two terms, averaged over ω and the number of smallest sizes left out."""
 
     omegas: Annotated[list[Omega], one_or_many(Omega, MOST_ALTERNATIVES)] = described(
         "the set of ω averaged over",
@@ -217,7 +239,7 @@ class ExtrapolationFields(Fields):
         min_length=1, max_length=MOST_ALTERNATIVES, default=[0.5, 0.75, 1.0],
     )  # fmt: skip
     most_sizes_cut: int = described(
-        "leave out none, one, … up to this many of the smallest sizes (three always stay)",
+        "leave out none, one, … up to this many of the smallest sizes (three stay, with two terms four)",
         "a whole number from 0 to 20", ge=0, le=20, default=2,
     )  # fmt: skip
 

@@ -5,12 +5,19 @@ from pathlib import Path
 from conetone.sweep.blocks import Block
 from conetone.sweep.points import OperatorChoice
 
-PIECE_TABLES = ("fits", "bins", "profiles")
-CLOSING_TABLES = ("fits", "bins", "profiles", "exponents", "extrapolations")
+PIECE_TABLES = ("fits", "bins", "profiles", "cutoffs")
+CLOSING_TABLES = (
+    "fits", "bins", "profiles", "exponents", "extrapolations", "amplitudes", "diagnostics", "differences",
+)  # fmt: skip
 FIGURE_FOLDER = Path("figures")
+CALIBRATION_FOLDER = Path("calibration")
+# Also the stem of its figure.
+CALIBRATION_TABLE = "calibration"
 FIGURE_SUFFIXES = (".pdf", ".png", ".csv")
+# The closing table for LaTeX, beside the figures.
+LATEX_TABLE = FIGURE_FOLDER / "exponents.tex"
 # Drawn once for each operator; `exponents` is drawn once for all.
-FIGURE_KINDS = ("spectra", "extrapolation", "local-slope")
+FIGURE_KINDS = ("spectra", "extrapolation", "local-slope", "diagnostics", "amplitudes")
 
 
 def orders_path(block: Block) -> Path:
@@ -19,13 +26,18 @@ def orders_path(block: Block) -> Path:
 
 
 def spectra_path(block: Block, operator: OperatorChoice) -> Path:
-    """The spectra of one operator of one block."""
-    return Path("spectra") / f"{block.name}.{operator.name}.parquet"
+    """The spectra of one block that an operator is ranked from; operators may share them."""
+    return Path("spectra") / f"{block.name}.{operator.spectral.name}.parquet"
 
 
 def piece_path(series: str, table: str) -> Path:
     """One of the tables of a single fitted series."""
     return Path("pieces") / f"{series}.{table}.parquet"
+
+
+def injections_path(series: str, truth: str, number: int) -> Path:
+    """One block of injections of a truth into a series."""
+    return CALIBRATION_FOLDER / f"{series}.{truth}.{number}.parquet"
 
 
 def closing_path(table: str) -> Path:
@@ -40,6 +52,6 @@ def figure_names(operators: tuple[OperatorChoice, ...]) -> list[str]:
 
 def figure_paths(operators: tuple[OperatorChoice, ...]) -> list[Path]:
     """Every file that the figure stage writes."""
-    return [
-        FIGURE_FOLDER / f"{name}{suffix}" for name in figure_names(operators) for suffix in FIGURE_SUFFIXES
-    ]
+    names = figure_names(operators)
+    drawn = [FIGURE_FOLDER / f"{name}{suffix}" for name in names for suffix in FIGURE_SUFFIXES]
+    return [*drawn, LATEX_TABLE]

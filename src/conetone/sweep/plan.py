@@ -1,12 +1,16 @@
 """The jobs that a sweep expands into, stage by stage: requests, files, forecasts."""
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from math import ceil
 from pathlib import Path
 
 from conetone.errors import SweepError
+from conetone.fit.models import LOGARITHM_MODELS, POWER_MODELS
+from conetone.fit.size import WindowSettings
+from conetone.operators.catalogue import spectral_part
+from conetone.reference.exponents import holds_logarithm
 from conetone.sweep import cost
 from conetone.sweep.blocks import Block, blocks_of
 from conetone.sweep.definition import Sweep
@@ -128,16 +132,15 @@ class Plan:
         ]
 
     def _diagonalise(self) -> list[Job]:
-        return [
-            self._diagonalise_of(block, operator)
-            for block in self.blocks
-            for operator in self.sweep.operators
-        ]
+        # several series may be ranked from one spectrum
+        operators = dict.fromkeys(operator.spectral for operator in self.sweep.operators)
+        return [self._diagonalise_of(block, operator) for block in self.blocks for operator in operators]
 
     def _diagonalise_of(self, block: Block, operator: OperatorChoice) -> Job:
         point = block.point
         spectrum = self.spectra[point.size]
-        request = DiagonaliseRequest(point, operator.matrix, operator.part, spectrum, block.first, block.stop)
+        part = spectral_part(operator.part)
+        request = DiagonaliseRequest(point, operator.matrix, part, spectrum, block.first, block.stop)
         seconds = len(block.replicates) * cost.diagonalise_seconds(point, operator, spectrum)
         many = point.size >= MANY_ELEMENTS and not spectrum.takes_all(point.size)
         return Job(
@@ -155,7 +158,7 @@ class Plan:
         return [self._fit_of(series) for series in self.series]
 
     def _fit_of(self, series: Series) -> Job:
-        request = FitRequest(series, self.sweep.sizes, self.sweep.replicates, self.sweep.windows)
+        request = FitRequest(series, self.sweep.sizes, self.sweep.replicates, self._windows_of(series))
         inputs = [spectra_path(b, series.operator) for size in request.sizes for b in request.blocks(size)]
         outputs = tuple(piece_path(series.name, table) for table in PIECE_TABLES)
         counts = [2 * each.count if each.count else size for size, each in self.spectra.items()]
@@ -163,11 +166,19 @@ class Plan:
         memory = cost.fit_mib(eigenvalues)
         return Job("fit", series.name, request, tuple(inputs), outputs, cost.FIT_SECONDS, memory)
 
+    def _windows_of(self, series: Series) -> WindowSettings:
+        """The windows with the models asked for, or those that theory names for this series."""
+        windows, operator = self.sweep.windows, series.operator
+        if windows.models:
+            return windows
+        log = holds_logarithm(operator.matrix, operator.part, series.choice.dimension)
+        return replace(windows, models=LOGARITHM_MODELS if log else POWER_MODELS)
+
     def _aggregate(self) -> Job:
         names = tuple(series.name for series in self.series)
         inputs = tuple(piece_path(name, table) for name in names for table in PIECE_TABLES)
         outputs = tuple(closing_path(table) for table in CLOSING_TABLES)
-        request = AggregateRequest(names, self.sweep.extrapolation)
+        request = AggregateRequest(names, self.sweep.windows.estimator, self.sweep.extrapolation)
         return Job("aggregate", "all", request, inputs, outputs, cost.FIT_SECONDS)
 
     def _figure(self) -> Job:

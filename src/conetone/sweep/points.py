@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, Literal
 
-from conetone.operators.catalogue import Part
+from conetone.operators.catalogue import Part, spectral_part
 
 Count = Literal["fixed", "poisson"]
 
@@ -27,6 +27,11 @@ class EnsembleChoice:
     ensemble: str
     parameters: tuple[tuple[str, int], ...]
     count: Count
+
+    @property
+    def dimension(self) -> int | None:
+        """Its spacetime dimension, None where it has none."""
+        return dict(self.parameters).get("dimension")
 
     @property
     def label(self) -> str:
@@ -95,6 +100,11 @@ class OperatorChoice:
     def name(self) -> str:
         """For people and file names: `causal-antisymmetric`."""
         return f"{self.matrix}-{self.part}"
+
+    @property
+    def spectral(self) -> "OperatorChoice":
+        """The operator that is diagonalised for it: `causal-symmetric` for `causal-symmetric-positive`."""
+        return OperatorChoice(self.matrix, spectral_part(self.part))
 
 
 @dataclass(frozen=True)

@@ -9,11 +9,13 @@ from dataclasses import dataclass
 from typing import Any, Self
 
 from conetone.errors import RequestError
-from conetone.operators.catalogue import Part
-from conetone.records.tables import VERSION
+from conetone.fit.logs import Estimator
+from conetone.fit.size import WindowSettings
+from conetone.operators.catalogue import SPECTRAL_PARTS, SpectralPart
+from conetone.records.tables import VERSIONS
 from conetone.sweep.blocks import Block, blocks_of
 from conetone.sweep.points import OperatorChoice, Point, Series, canonical
-from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings, WindowSettings
+from conetone.sweep.settings import ExtrapolationSettings, SpectrumSettings
 
 
 @dataclass(frozen=True)
@@ -36,7 +38,7 @@ class Request(ABC):
 
     def text(self) -> str:
         """Canonical JSON."""
-        return canonical({"stage": self.stage(), "version": VERSION, **self.fields()})
+        return canonical({"stage": self.stage(), "version": VERSIONS[self.stage()], **self.fields()})
 
     @classmethod
     def parse(cls, text: str) -> Self:
@@ -49,10 +51,9 @@ class Request(ABC):
             raise RequestError(
                 "request", f"{text!r} ({error!r})", f"a complete request of {cls.stage()}"
             ) from None
-        if (stage, version) != (cls.stage(), VERSION):
-            raise RequestError(
-                "request", f"{stage} of version {version}", f"{cls.stage()} of version {VERSION}"
-            )
+        if (stage, version) != (cls.stage(), VERSIONS[cls.stage()]):
+            allowed = f"{cls.stage()} of version {VERSIONS[cls.stage()]}"
+            raise RequestError("request", f"{stage} of version {version}", allowed)
         if set(values) != set(request.fields()):
             unknown = ", ".join(sorted(set(values) ^ set(request.fields())))
             raise RequestError(
@@ -62,9 +63,9 @@ class Request(ABC):
 
 
 def without_replicates(text: str) -> str:
-    """A request's text without its range of replicates: equal for blocks that differ only in length."""
+    """A request's text without its range of replicates or injections: equal for blocks of another length."""
     values = json.loads(text)
-    values.pop("replicates", None)
+    values.pop("injections" if values["stage"] == InjectRequest.stage() else "replicates", None)
     return canonical(values)
 
 
@@ -95,7 +96,7 @@ class DiagonaliseRequest(Request):
 
     point: Point
     matrix: str
-    part: Part
+    part: SpectralPart
     spectrum: SpectrumSettings
     first: int
     stop: int
@@ -112,6 +113,8 @@ class DiagonaliseRequest(Request):
     @classmethod
     def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
         point = Point.from_json(fields["point"])
+        if fields["part"] not in SPECTRAL_PARTS:
+            raise ValueError(f"no spectrum is taken of the part {fields['part']}")
         spectrum = SpectrumSettings.from_json(fields["spectrum"])
         return cls(point, fields["matrix"], fields["part"], spectrum, *fields["replicates"])
 
@@ -153,14 +156,23 @@ class AggregateRequest(Request):
     """Extrapolate and collect the series, given by name, in the order of the tables."""
 
     series: tuple[str, ...]
+    estimator: Estimator
     extrapolation: ExtrapolationSettings
 
     def fields(self) -> dict[str, Any]:  # noqa: D102
-        return {"series": list(self.series), "extrapolation": self.extrapolation.as_json()}
+        return {
+            "series": list(self.series),
+            "estimator": self.estimator,
+            "extrapolation": self.extrapolation.as_json(),
+        }
 
     @classmethod
     def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
-        return cls(tuple(fields["series"]), ExtrapolationSettings.from_json(fields["extrapolation"]))
+        return cls(
+            tuple(fields["series"]),
+            fields["estimator"],
+            ExtrapolationSettings.from_json(fields["extrapolation"]),
+        )
 
 
 @dataclass(frozen=True)
@@ -175,3 +187,71 @@ class FigureRequest(Request):
     @classmethod
     def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
         return cls(tuple(OperatorChoice(matrix, part) for matrix, part in fields["operators"]))
+
+
+@dataclass(frozen=True)
+class InjectRequest(Request):
+    """Injections first … stop − 1 of one truth into one series, each fitted and extrapolated as measured."""
+
+    fit: FitRequest
+    extrapolation: ExtrapolationSettings
+    truth: str
+    seed: int
+    first: int
+    stop: int
+
+    def fields(self) -> dict[str, Any]:  # noqa: D102
+        return {
+            **self.fit.fields(),
+            "extrapolation": self.extrapolation.as_json(),
+            "truth": self.truth,
+            "seed": self.seed,
+            "injections": [self.first, self.stop],
+            # what is put to the test is the code of these stages
+            "tested": [VERSIONS["fit"], VERSIONS["aggregate"]],
+        }
+
+    @classmethod
+    def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
+        if fields["tested"] != [VERSIONS["fit"], VERSIONS["aggregate"]]:
+            raise ValueError(f"versions {fields['tested']} of the stages tested")
+        return cls(
+            FitRequest.from_fields(fields),
+            ExtrapolationSettings.from_json(fields["extrapolation"]),
+            fields["truth"],
+            fields["seed"],
+            *fields["injections"],
+        )
+
+    @property
+    def stream(self) -> str:
+        """What the random streams of its injections belong to: the series and the truth, nothing else."""
+        return canonical({"series": self.fit.series.as_json(), "truth": self.truth})
+
+
+@dataclass(frozen=True)
+class Calibrated:
+    """The injections of one series: its truths, each in so many blocks."""
+
+    series: str
+    truths: tuple[str, ...]
+    blocks: int
+
+
+@dataclass(frozen=True)
+class CoverageRequest(Request):
+    """Collect so many injections of every truth and series."""
+
+    series: tuple[Calibrated, ...]
+    injections: int
+
+    def fields(self) -> dict[str, Any]:  # noqa: D102
+        return {
+            "series": [[each.series, list(each.truths), each.blocks] for each in self.series],
+            "injections": self.injections,
+        }
+
+    @classmethod
+    def from_fields(cls, fields: dict[str, Any]) -> Self:  # noqa: D102
+        series = tuple(Calibrated(name, tuple(truths), blocks) for name, truths, blocks in fields["series"])
+        return cls(series, fields["injections"])

@@ -15,13 +15,15 @@ class Purpose(IntEnum):
 
     ELEMENT_COUNT = 0
     SPRINKLING = 1
+    INJECTION = 2
 
 
 def generator_for(root_seed: int, point: str, purpose: Purpose, replicate: int) -> np.random.Generator:
     """The generator of one stream: Philox, keyed through SeedSequence.
 
-    `point` is the canonical JSON of a point; its SHA-256, as eight 32-bit words, is the first part of the
-    spawn key (NumPy's SeedSequence guarantees independent streams for different spawn keys).
+    `point` is the canonical JSON of a point, or for injections of a series and a truth; `replicate` is then
+    their number. Its SHA-256, as eight 32-bit words, is the first part of the spawn key (NumPy's SeedSequence
+    guarantees independent streams for different spawn keys).
     """
     digest = hashlib.sha256(point.encode()).digest()
     words = tuple(int.from_bytes(digest[i : i + 4], "little") for i in range(0, 32, 4))

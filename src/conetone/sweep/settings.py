@@ -4,8 +4,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
-from conetone.fit.windows import Growth, WindowRule
-
 Extent = Literal["full", "leading"]
 Solver = Literal["auto", "two-stage", "lapack"]
 # With fewer elements than this for each eigenvalue of one sign, and some more, there is no room for the
@@ -56,32 +54,6 @@ class SpectrumSettings:
     def from_json(cls, values: Mapping[str, Any]) -> "SpectrumSettings":
         """Inverse of `as_json`."""
         return cls(values["extent"], values["count"], values["tolerance"], values["solver"])
-
-
-@dataclass(frozen=True)
-class WindowSettings:
-    """The grid of windows, and what is fitted in them."""
-
-    rules: tuple[WindowRule, ...]
-    smallest_rank: int
-    bins: int
-    models: tuple[str, ...]
-
-    def as_json(self) -> dict[str, Any]:
-        """The settings as JSON values, the rules as text."""
-        rules = [[str(rule.first), str(rule.last)] for rule in self.rules]
-        return {
-            "rules": rules,
-            "smallest_rank": self.smallest_rank,
-            "bins": self.bins,
-            "models": list(self.models),
-        }
-
-    @classmethod
-    def from_json(cls, values: Mapping[str, Any]) -> "WindowSettings":
-        """Inverse of `as_json`."""
-        rules = tuple(WindowRule(Growth.parse(first), Growth.parse(last)) for first, last in values["rules"])
-        return cls(rules, values["smallest_rank"], values["bins"], tuple(values["models"]))
 
 
 @dataclass(frozen=True)
