@@ -122,6 +122,61 @@ def expand(
 
 
 @app.command()
+def allocate(
+    sweep: SweepFile,
+    target: Annotated[
+        float | None, typer.Option(metavar="ERROR", help="Total error that every exponent shall reach.")
+    ] = None,
+    budget: Annotated[
+        str | None,
+        typer.Option(metavar="TIME", help="Core time, that of the pilot included: 90m, 40h, 2d."),
+    ] = None,
+    floor: Annotated[
+        int | None, typer.Option(min=2, metavar="N", help="Fewest replicates of a size [default: 8].")
+    ] = None,
+    results: Results = Path("results"),
+    json: Annotated[bool, typer.Option("--json", help="Print JSON.")] = False,
+) -> None:
+    """Say how many replicates of each size reach an error at least cost, from a pilot's results.
+
+    Give a target or a budget.
+
+    Example: conetone allocate config/first-look.yaml --target 0.005
+    """
+    from conetone.run.allocation import print_allocation
+
+    sys.exit(print_allocation(sweep, results, target, budget, floor, as_json=json))
+
+
+@app.command()
+def calibrate(
+    sweep: SweepFile,
+    injections: Annotated[
+        int, typer.Option(min=1, max=100_000, metavar="N", help="Injections of each truth into each series.")
+    ] = 400,
+    cores: Annotated[
+        int | None, typer.Option(min=1, metavar="N", help="Jobs at once [default: all cores].")
+    ] = None,
+    seed: Annotated[
+        int | None, typer.Option(min=0, metavar="N", help="Seed of the injections [default: the sweep's].")
+    ] = None,
+    results: Results = Path("results"),
+    quiet: Annotated[bool, typer.Option("--quiet", "-q", help="Print nothing but errors.")] = False,
+    json: Annotated[bool, typer.Option("--json", help="Print JSON on standard output.")] = False,
+) -> None:
+    """Measure how often the errors of a finished sweep hold, on synthetic spectra of known exponent.
+
+    They have the sweep's sizes, replicates and measured noise, and pass through the same fits. More
+    injections than before add to those that are there. Exit code 1: errors are smaller than promised.
+
+    Example: conetone calibrate config/first-look.yaml --injections 100 --cores 2
+    """
+    from conetone.run.calibrating import calibrate_sweep
+
+    sys.exit(calibrate_sweep(sweep, results, cores, injections, seed, quiet=quiet, as_json=json))
+
+
+@app.command()
 def sprinkle(request: RequestText, output: Output, threads: Threads = 1) -> None:
     """Draw the orders of one block (a job of the workflow)."""
     from conetone.stages.sprinkle import sprinkle_block
@@ -176,6 +231,26 @@ def figure(request: RequestText, threads: Threads = 1) -> None:
 
     with _threads(threads):
         draw_figures(FigureRequest.parse(request))
+
+
+@app.command()
+def inject(request: RequestText, output: Output, threads: Threads = 1) -> None:
+    """Inject spectra of known exponent into one series (a job of `calibrate`)."""
+    from conetone.stages.inject import inject_block
+    from conetone.sweep.requests import InjectRequest
+
+    with _threads(threads):
+        inject_block(InjectRequest.parse(request), output, own_process=True)
+
+
+@app.command()
+def coverage(request: RequestText, threads: Threads = 1) -> None:
+    """Collect the injections and draw how often errors held (a job of `calibrate`)."""
+    from conetone.stages.coverage import collect_coverage
+    from conetone.sweep.requests import CoverageRequest
+
+    with _threads(threads):
+        collect_coverage(CoverageRequest.parse(request))
 
 
 def _threads(count: int) -> AbstractContextManager[object]:

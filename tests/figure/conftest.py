@@ -21,8 +21,9 @@ def study(tmp_path_factory: pytest.TempPathFactory) -> Drawn:
 
 @pytest.fixture(scope="session")
 def single(tmp_path_factory: pytest.TempPathFactory) -> Drawn:
-    """One ensemble."""
-    return draw(tmp_path_factory.mktemp("single"), make_tables(DIAMONDS[:1]), (ANTISYMMETRIC,))
+    """One ensemble, fitted in bins of rank."""
+    rows = make_tables(DIAMONDS[:1], estimator="rank-bins")
+    return draw(tmp_path_factory.mktemp("single"), rows, (ANTISYMMETRIC,))
 
 
 @pytest.fixture(scope="session")

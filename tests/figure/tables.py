@@ -6,6 +6,7 @@ from typing import Any
 
 import numpy as np
 
+from conetone.fit.logs import Estimator
 from conetone.records.files import write_table
 from conetone.records.tables import EXPONENTS, FITS, SERIES_KEYS, TABLES
 from conetone.sweep.paths import CLOSING_TABLES, closing_path
@@ -19,6 +20,7 @@ SIZES = (256, 362, 512, 724, 1024)
 RANKS = np.array([1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0])
 FITTED = range(2, 6)
 OMEGA = 0.5
+SMOOTH_RANKS = (4.0, 5.656854249492381, 8.0, 11.313708498984761, 16.0)
 
 Rows = dict[str, list[dict[str, Any]]]
 
@@ -28,6 +30,7 @@ def make_tables(
     operators: Sequence[OperatorChoice] = (ANTISYMMETRIC,),
     sizes: Sequence[int] = SIZES,
     seed: int = 1,
+    estimator: Estimator = "smooth-count",
 ) -> Rows:
     """Rows of every closing table: one series for each ensemble (name and dimension) and operator."""
     rng = np.random.default_rng(seed)
@@ -42,12 +45,68 @@ def make_tables(
                 "matrix": operator.matrix,
                 "part": operator.part,
             }
-            _add_series(tables, keys, sizes, rng)
+            alpha = 0.5 + 0.5 * rng.random()
+            _add_series(tables, keys, sizes, alpha, estimator, rng)
+            _add_diagnostics(tables, keys, sizes, alpha, rng)
+            _add_amplitudes(tables, keys, alpha, rng)
     return tables
 
 
-def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: np.random.Generator) -> None:
-    alpha = 0.5 + 0.5 * rng.random()
+def _add_diagnostics(
+    tables: Rows, keys: dict[str, Any], sizes: Sequence[int], alpha: float, rng: np.random.Generator
+) -> None:
+    def add(kind: str, abscissa: float, quality: float | None, *numbers: float) -> None:
+        values = numbers or (None, None, None)
+        limit = dict(zip(("exponent", "statistical", "systematic"), values, strict=True))
+        tables["diagnostics"].append(
+            {**keys, "kind": kind, "abscissa": float(abscissa), **limit, "quality": quality}
+        )
+
+    for i, size in enumerate(sizes[:-2]):
+        noise = 0.01 * float(rng.standard_normal())
+        add("smallest-size", size, 2.5 / (1 + i), alpha + noise, 0.01 + 0.005 * i, 0.02 + 0.01 * i)
+    for omega in np.linspace(0.2, 2.0, 19) if len(sizes) > 2 else ():
+        value = alpha - 0.03 / omega + 0.04
+        add("omega", omega, float(0.6 + (omega - 0.7) ** 2), value, 0.012 / omega, 0.02 / omega)
+    for power in np.linspace(0.3, 1.2, 37) if len(sizes) > 1 else ():
+        add("collapse", power, float(np.exp(12 * (power - 0.7) ** 2)))
+    add("sequence", 1.0, None, alpha, 0.0, 0.001)
+
+
+def _add_amplitudes(tables: Rows, keys: dict[str, Any], alpha: float, rng: np.random.Generator) -> None:
+    known = keys["dimension"] is not None and keys["matrix"] == "causal"
+    power = keys["dimension"] / (2 * (keys["dimension"] - 1)) if known else alpha
+    for i, rank in enumerate(SMOOTH_RANKS):
+        law = 0.3 * rank**-power
+        cutoff = law * float(np.exp(0.02 * rng.standard_normal()))
+        tables["amplitudes"].append(
+            {
+                **keys,
+                "smooth_rank": rank,
+                "cutoff": cutoff,
+                "statistical": 0.01 * cutoff,
+                "systematic": 0.004 * (1 + i) * cutoff,
+                "slope": 2.0 * rank,
+                "slope_statistical": 0.3 * rank,
+                "slope_systematic": 0.1 * rank,
+                "slope_expected": 2.42 * rank if known else None,
+                "law": law if known else None,
+                "law_standing": "heuristic" if known else None,
+                "law_source": "made up for a test" if known else None,
+                "deviation": 0.5 if known else None,
+            }
+        )
+
+
+def _add_series(
+    tables: Rows,
+    keys: dict[str, Any],
+    sizes: Sequence[int],
+    alpha: float,
+    estimator: Estimator,
+    rng: np.random.Generator,
+) -> None:
+    smooth = estimator == "smooth-count"
     for size in sizes:
         log_magnitude = np.log(size / 3) - alpha * np.log(RANKS) + 0.02 * rng.standard_normal(len(RANKS))
         error = 0.01 + 0.01 * rng.random(len(RANKS))
@@ -74,8 +133,10 @@ def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: n
             tables["bins"].append(
                 {
                     **shared,
-                    "first_rank": int(rank),
-                    "last_rank": 2 * int(rank) - 1,
+                    "estimator": estimator,
+                    # a bin of ranks, or the smooth rank whose rank this is
+                    "first_rank": 0.9 * rank if smooth else rank,
+                    "last_rank": 0.9 * rank if smooth else 2 * rank - 1,
                     "window": "a .. b",
                     "model": "power",
                     "fitted": float(fitted[i]) if inside else None,
@@ -88,6 +149,7 @@ def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: n
                 | {
                     **keys,
                     "size": size,
+                    "estimator": estimator,
                     "window": window,
                     "model": model,
                     "exponent": float(alpha + size**-OMEGA + 0.01 * rng.standard_normal()),
@@ -120,6 +182,7 @@ def _add_series(tables: Rows, keys: dict[str, Any], sizes: Sequence[int], rng: n
             "exponent": alpha,
             "statistical": 0.02,
             "systematic": 0.031,
+            "estimator": estimator,
             "sizes": list(sizes),
             "replicates_used": 10,
             "replicates_failed": 0,
@@ -144,7 +207,12 @@ def failed(tables: Rows, choose: Callable[[dict[str, Any]], bool], *, also_spect
 
     def kept(name: str) -> list[dict[str, Any]]:
         gone = name == "extrapolations" or (also_spectra and name != "exponents")
-        return [row for row in tables[name] if not (gone and choose(row))]
+        # slopes collapse or do not without any exponent
+        return [
+            row
+            for row in tables[name]
+            if not choose(row) or not (gone or row.get("kind") in ("smallest-size", "omega", "sequence"))
+        ]
 
     exponents = [
         {**row, **dict.fromkeys(results), **reason} if choose(row) else row for row in kept("exponents")

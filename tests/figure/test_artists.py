@@ -48,7 +48,8 @@ def compare(figure, expected: dict[str, Points], levels: dict[str, float], windo
     for name, (first, last) in windows.items():
         for patch in found[name]:
             assert isinstance(patch, Rectangle)
-            assert (patch.get_x(), patch.get_x() + patch.get_width()) == (first, last)
+            # a rectangle keeps its width, not its far end
+            assert (patch.get_x(), patch.get_x() + patch.get_width()) == pytest.approx((first, last), rel=1e-14)
 
 
 def ends(rows: pd.DataFrame) -> dict[str, tuple[float, float]]:
@@ -123,6 +124,77 @@ def test_exponents(any_drawn: Drawn) -> None:
     if (csv.layer == "curve").any():
         expect(expected, "curve", csv[csv.layer == "curve"], "position", "exponent")
     compare(any_drawn.figures["exponents"], expected, {}, {})
+
+
+def test_diagnostics(any_drawn: Drawn) -> None:
+    """Values quoted and expected stand in two panels: beside the sizes and beside ω."""
+    for name in names(any_drawn, "diagnostics"):
+        csv = any_drawn.csv(name)
+        expected: dict[str, Points] = {}
+        twice: dict[str, tuple[float, ...]] = {}
+        for (layer, series), rows in csv.groupby(["layer", "series"]):
+            if layer == "collapse":
+                expect(expected, f"collapse:{series}", rows, "abscissa", "quality")
+            elif layer in ("smallest-size", "omega"):
+                expect(expected, f"{layer}:{series}", rows, "abscissa", "exponent")
+                expect(expected, f"{layer}-quality:{series}", rows, "abscissa", "quality")
+                total, ends = f"{layer}-total:{series}", ("total_low", "total_high")
+                expect(expected, total, rows, "abscissa", *ends)
+                inner, ends = f"{layer}-statistical:{series}", ("statistical_low", "statistical_high")
+                if layer == "omega":
+                    expect(expected, inner, rows, "abscissa", *ends)
+                else:
+                    expect(expected, f"{inner}:low", rows, "abscissa", ends[0])
+                    expect(expected, f"{inner}:high", rows, "abscissa", ends[1])
+            else:
+                (row,) = rows.itertuples()
+                twice[f"{layer}:{series}"] = (row.exponent, row.exponent)
+                if layer == "quoted":
+                    twice[f"quoted-total:{series}"] = (row.total_low, row.total_high)
+        found = artists(any_drawn.figures[name])
+        assert set(found) == {*expected, *twice}
+        for gid, wanted in expected.items():
+            (artist,) = found[gid]
+            assert points_of(artist) == wanted, gid
+        for gid, wanted in twice.items():
+            assert len(found[gid]) == 2, gid
+            for artist in found[gid]:
+                if isinstance(artist, Rectangle):
+                    ends = (artist.get_y(), artist.get_y() + artist.get_height())
+                    assert ends == pytest.approx(wanted, rel=1e-14)
+                else:
+                    assert isinstance(artist, Line2D)
+                    assert tuple(artist.get_ydata()) == wanted
+
+
+def test_amplitudes(any_drawn: Drawn) -> None:
+    for name in names(any_drawn, "amplitudes"):
+        csv = any_drawn.csv(name)
+        expected: dict[str, Points] = {}
+        for (layer, series), rows in csv.groupby(["layer", "series"]):
+            expect(expected, f"{layer}:{series}", rows, "smooth_rank", "scaled")
+            if layer == "cutoff":
+                expect(expected, f"cutoff-total:{series}", rows, "smooth_rank", "total_low", "total_high")
+                for end in ("low", "high"):
+                    gid = f"cutoff-statistical:{series}:{end}"
+                    expect(expected, gid, rows, "smooth_rank", f"statistical_{end}")
+        compare(any_drawn.figures[name], expected, {}, {})
+
+
+def test_what_is_quoted_reads_in_grey(study: Drawn) -> None:
+    """Bands of the profile over ω are darker than the band of the quoted value; weights: Rec. 601."""
+    found = artists(study.figures["diagnostics-causal-antisymmetric"])
+    series = "minkowski-diamond-3-causal-antisymmetric"
+
+    def grey(artist: Artist) -> float:
+        red, green, blue, alpha = np.atleast_2d(artist.get_facecolor())[0]
+        return 1 - alpha * (1 - float(np.dot((0.299, 0.587, 0.114), (red, green, blue))))
+
+    quoted = grey(found[f"quoted-total:{series}"][0])
+    total = grey(found[f"omega-total:{series}"][0])
+    statistical = grey(found[f"omega-statistical:{series}"][0])
+    assert quoted - total > 0.05
+    assert total - statistical > 0.05
 
 
 @pytest.mark.parametrize("name", ["spectra-causal-antisymmetric", "local-slope-causal-antisymmetric"])

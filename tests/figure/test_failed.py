@@ -2,11 +2,15 @@
 
 from pathlib import Path
 
-from conetone.sweep.paths import FIGURE_FOLDER, figure_paths
+from conetone.figure.amplitudes import amplitudes_numbers, draw_amplitudes
+from conetone.figure.closing import ClosingTables
+from conetone.figure.diagnostics import diagnostics_numbers, draw_diagnostics
+from conetone.records.tables import SERIES_KEYS
+from conetone.sweep.paths import FIGURE_FOLDER, FIGURE_KINDS, figure_paths
 
 from .conftest import LONG
 from .drawing import Drawn, artists, draw, texts
-from .tables import ANTISYMMETRIC, LINK, make_tables
+from .tables import ANTISYMMETRIC, DIAMONDS, LINK, Rows, failed, make_tables
 
 REASON = "2 usable sizes; extrapolation takes 3"
 
@@ -35,7 +39,7 @@ def test_sizes_are_drawn_without_an_extrapolation(crowd: Drawn) -> None:
 
 
 def test_an_empty_panel_says_why(crowd: Drawn, nothing: Drawn) -> None:
-    for kind in ("spectra", "extrapolation", "local-slope"):
+    for kind in FIGURE_KINDS:
         name = f"{kind}-causal-antisymmetric"
         assert written(crowd, name).count(f" {REASON}") >= 1
         assert written(nothing, name).count(REASON) == 2
@@ -69,3 +73,40 @@ def test_what_nothing_is_expected_of(tmp_path: Path) -> None:
     assert set(drawn.csv("exponents").layer) == {"exponent"}
     assert [axes.get_xlabel() for axes in drawn.figures["exponents"].axes] == ["no dimension"]
     assert "expected" not in set(drawn.csv("extrapolation-link-symmetric").layer)
+
+
+def test_slopes_collapse_or_not_without_an_exponent(crowd: Drawn) -> None:
+    csv = crowd.csv("diagnostics-causal-antisymmetric")
+    failed = csv[(csv.ensemble == "minkowski-diamond") & (csv.dimension == 3)]
+    assert set(failed.layer) == {"collapse"}
+    assert LONG not in set(csv.ensemble)
+    assert "slopes of fewer than two sizes" in written(crowd, "diagnostics-causal-antisymmetric")
+
+
+def said_of_amplitudes(rows: Rows) -> str:
+    tables = ClosingTables([column.name for column in SERIES_KEYS], **rows)
+    numbers = amplitudes_numbers(tables, ANTISYMMETRIC)
+    assert numbers.empty
+    return " ".join(text.get_text() for text in texts(draw_amplitudes(numbers, tables, ANTISYMMETRIC)))
+
+
+def test_without_any_exponent_amplitudes_have_no_power_to_be_scaled_by() -> None:
+    rows = make_tables([("kleitman-rothschild", None)])
+    rows["exponents"] = failed(rows, lambda row: True)["exponents"]
+    assert REASON in said_of_amplitudes(rows).replace("\n", " ")
+
+
+def test_an_exponent_without_amplitudes_says_why() -> None:
+    said = said_of_amplitudes({**make_tables(DIAMONDS[:1]), "amplitudes": []})
+    assert "no smooth rank that three sizes reach" in said.replace("\n", " ")
+
+
+def test_slopes_that_collapse_need_no_legend() -> None:
+    """Nothing but a collapse to draw: no exponent of any series."""
+    rows = failed(make_tables([("kleitman-rothschild", None)]), lambda row: True)
+    tables = ClosingTables([column.name for column in SERIES_KEYS], **rows)
+    numbers = diagnostics_numbers(tables, ANTISYMMETRIC)
+    assert set(numbers["layer"]) == {"collapse"}
+    figure = draw_diagnostics(numbers, tables, ANTISYMMETRIC)
+    assert figure.legends == []
+    assert list(artists(figure)) == ["collapse:kleitman-rothschild-None-causal-antisymmetric"]

@@ -27,7 +27,9 @@ def test_every_promised_file_and_no_other(any_drawn: Drawn) -> None:
     assert found == {*figure_paths(any_drawn.operators), *tables}
     for path in figure_paths(any_drawn.operators):
         head = (any_drawn.folder / path).read_bytes()[:8]
-        assert head.startswith({".pdf": b"%PDF-", ".png": b"\x89PNG", ".csv": b"series,"}[path.suffix])
+        assert head.startswith(
+            {".pdf": b"%PDF-", ".png": b"\x89PNG", ".csv": b"series,", ".tex": b"% Pre"}[path.suffix]
+        )
 
 
 def test_same_bytes_twice(single: Drawn, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

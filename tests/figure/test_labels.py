@@ -6,6 +6,7 @@ import pytest
 from conetone.figure.labels import (
     ensemble_label,
     inverse_power,
+    magnitudes_label,
     operator_label,
     text_inches,
     wrapped,
@@ -53,10 +54,16 @@ def test_numbers_of_numpy_count_as_numbers() -> None:
 
 
 def test_operators_in_words_and_mathematics() -> None:
-    """The self-adjoint parts, as the schema of the spectra table names them: M + Mᵀ and i(M − Mᵀ)."""
+    """As the schema of the spectra table names the parts; A = A₊ − A₋ if self-adjoint, |M| = (MᵀM)^½."""
     antisymmetric, symmetric = OperatorChoice("causal", "antisymmetric"), OperatorChoice("link", "symmetric")
     assert operator_label(antisymmetric) == r"causal, antisymmetric: $i(C-C^{\mathrm{T}})$"
     assert operator_label(symmetric) == r"link, symmetric: $L+L^{\mathrm{T}}$"
+    signs = [OperatorChoice("causal", "symmetric-positive"), OperatorChoice("causal", "symmetric-negative")]
+    assert operator_label(signs[0]) == r"causal, symmetric-positive: $(C+C^{\mathrm{T}})_{+}$"
+    assert operator_label(signs[1]) == r"causal, symmetric-negative: $(C+C^{\mathrm{T}})_{-}$"
+    assert operator_label(OperatorChoice("link", "singular")) == "link, singular: $|L|$"
+    assert magnitudes_label(signs[1]) == r"eigenvalues $|\lambda_r|$ of $(C+C^{\mathrm{T}})_{-}$"
+    assert magnitudes_label(OperatorChoice("link", "singular")) == "singular values $s_r$ of $L$"
     assert operator_label(OperatorChoice("my_own", "symmetric")).startswith(
         "my_own, symmetric: $\\mathrm{my-own}"
     )

@@ -39,9 +39,58 @@ def test_spectra(study: Drawn, operator) -> None:
     window = layer(numbers, "window")
     largest = fitted[fitted["size"] == 1024].groupby("series", sort=False)
     assert window["size"].tolist() == [1024] * 4
-    same(window["rank"], largest["first_rank"].min())
-    same(window["last_rank"], largest["last_rank"].max())
+    same(window["rank"], largest["rank"].min())
+    same(window["last_rank"], largest["rank"].max())
 
+
+def test_windows_end_where_their_points_or_bins_do(study: Drawn, single: Drawn) -> None:
+    """A smooth count is shown at the ranks of the same eigenvalues, bins with all their ranks."""
+    for drawn, columns in ((study, ("rank", "rank")), (single, ("first_rank", "last_rank"))):
+        for kind in ("spectra", "local-slope"):
+            numbers = layer(drawn.csv(f"{kind}-causal-antisymmetric"), "window")
+            bins = of_operator(drawn.table("bins"), ANTISYMMETRIC).dropna(subset="fitted")
+            largest = bins[bins["size"] == 1024].groupby("series", sort=False)
+            same(numbers["rank"], largest[columns[0]].min())
+            same(numbers["last_rank"], largest[columns[1]].max())
+
+
+@pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
+def test_diagnostics(study: Drawn, operator) -> None:
+    numbers = study.csv(f"diagnostics-{operator.name}")
+    table = of_operator(study.table("diagnostics"), operator)
+    for kind in ("smallest-size", "omega", "collapse"):
+        found, wanted = layer(numbers, kind), table[table.kind == kind].reset_index(drop=True)
+        assert found["series"].tolist() == wanted["series"].tolist()
+        same(found["abscissa"], wanted["abscissa"])
+        same(found["quality"], wanted["quality"])
+        if kind != "collapse":
+            same_errors(found, wanted["exponent"], wanted["statistical"], wanted["systematic"])
+    exponents = of_operator(study.table("exponents"), operator)
+    same_errors(
+        layer(numbers, "quoted"), exponents["exponent"], exponents["statistical"], exponents["systematic"]
+    )
+    same_expected(numbers, "exponent", exponents)
+    assert set(numbers.layer) == {"smallest-size", "omega", "collapse", "quoted", "expected"}
+
+
+@pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
+def test_amplitudes(study: Drawn, operator) -> None:
+    """Times ρ^α, α as expected, or as measured where nothing is expected."""
+    numbers = study.csv(f"amplitudes-{operator.name}")
+    table = of_operator(study.table("amplitudes"), operator)
+    exponents = of_operator(study.table("exponents"), operator).set_index("series")
+    power = exponents["expected"].fillna(exponents["exponent"]).loc[table["series"]].to_numpy()
+    factor = table["smooth_rank"].to_numpy() ** power
+    found = layer(numbers, "cutoff").rename(columns={"scaled": "exponent"})
+    same(found["power"], power)
+    same_errors(
+        found, table["cutoff"] * factor, table["statistical"] * factor, table["systematic"] * factor
+    )
+    known = table["law"].notna().to_numpy()
+    law = layer(numbers, "law")
+    same(law["scaled"], (table["law"] * factor)[known])
+    assert law["standing"].tolist() == table["law_standing"][known].tolist()
+    assert 0 < known.sum() < len(known)
 
 @pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
 def test_local_slope(study: Drawn, operator) -> None:

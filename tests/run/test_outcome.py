@@ -8,9 +8,9 @@ import pytest
 from rich.console import Console
 
 from conetone.errors import LiveRunError
+from conetone.figure.cells import format_value
 from conetone.run import outcome
 from conetone.run.lock import run_lock
-from conetone.run.outcome import format_value
 from conetone.run.progress import duration
 
 

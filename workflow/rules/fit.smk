@@ -5,6 +5,7 @@ rule fit:
         "pieces/{series}.fits.parquet",
         "pieces/{series}.bins.parquet",
         "pieces/{series}.profiles.parquet",
+        "pieces/{series}.cutoffs.parquet",
     log:
         "logs/fit/{series}.log",
     conda:

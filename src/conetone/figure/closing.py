@@ -21,7 +21,7 @@ class Operator(Protocol):
 
     @property
     def part(self) -> str:
-        """Its self-adjoint part: symmetric or antisymmetric."""
+        """Name of the part: symmetric, antisymmetric, …"""
 
 
 @dataclass(frozen=True)
@@ -37,6 +37,9 @@ class ClosingTables:
     profiles: Sequence[Row]
     exponents: Sequence[Row]
     extrapolations: Sequence[Row]
+    amplitudes: Sequence[Row] = ()
+    diagnostics: Sequence[Row] = ()
+    differences: Sequence[Row] = ()
 
     def series_of(self, operator: Operator) -> list[Row]:
         """Rows of `exponents` of one operator, one a series, failed ones included."""

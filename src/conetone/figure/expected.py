@@ -18,15 +18,19 @@ def expected_rows(keys: Row, series: Row, column: str) -> list[dict[str, Any]]:
     return [{**keys, "layer": "expected", column: series["expected"], "standing": standing}]
 
 
-def draw_expected(axes: Axes, numbers: pd.DataFrame, column: str, series: str) -> None:
+def draw_expected(
+    axes: Axes, numbers: pd.DataFrame, column: str, series: str, *, in_words: bool = True
+) -> None:
     """A dashed line at the expected exponent, its standing written outside, where no data can be.
 
-    The limits of the y axis must be final.
+    The limits of the y axis must be final. Not `in_words` is for a panel beside another that says it.
     """
     low, high = axes.get_ylim()
     for _, row in layer(numbers, "expected", series).iterrows():
         value, standing = float(row[column]), str(row["standing"])
-        axes.axhline(value, gid=f"expected:{series}", zorder=1.5, **_line(standing))
+        axes.axhline(value, gid=f"expected:{series}", zorder=1.5, **standing_line(standing))
+        if not in_words:
+            continue
         place = min(max((value - low) / (high - low), 0.0), 1.0)
         # near an end of the axis the word leans inwards, so that it stays beside its own panel
         align = "bottom" if place < 0.3 else "top" if place > 0.7 else "center"
@@ -46,8 +50,9 @@ def draw_expected(axes: Axes, numbers: pd.DataFrame, column: str, series: str) -
 def expected_handles(numbers: pd.DataFrame) -> list[Line2D]:
     """Legend entries of the standings that occur."""
     standings = sorted(set(layer(numbers, "expected")["standing"]))
-    return [Line2D([], [], label=f"expected, {standing}", **_line(standing)) for standing in standings]
+    return [Line2D([], [], label=f"expected, {standing}", **standing_line(standing)) for standing in standings]
 
 
-def _line(standing: str) -> dict[str, Any]:
+def standing_line(standing: str) -> dict[str, Any]:
+    """The look of a line that theory of this standing gives."""
     return {"color": INK, "linewidth": 0.8, "linestyle": expected_dashes(standing)}

@@ -31,7 +31,13 @@ def write_figure(stem: Path, figure: Figure, numbers: pd.DataFrame) -> None:
     _write(stem, ".csv", lambda path: numbers.to_csv(path, index=False, lineterminator="\n"))
 
 
-def _write(stem: Path, suffix: str, write: Callable[[Path], None]) -> None:
+def write_text(path: Path, text: str) -> None:
+    """Write a text file, whole or not at all; the folder is made if it is missing."""
+    path.parent.mkdir(parents=True, exist_ok=True)
+    _write(path.with_suffix(""), path.suffix, lambda part: part.write_text(text, encoding="utf-8"))
+
+
+def _write(stem: Path, suffix: str, write: Callable[[Path], object]) -> None:
     # names may hold dots, so the suffix is appended, not replaced
     temporary = stem.with_name(f".{stem.name}{suffix}.{os.getpid()}.part")
     try:

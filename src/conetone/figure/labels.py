@@ -19,7 +19,14 @@ _ENSEMBLES = {
     "kleitman-rothschild": "Kleitman–Rothschild",
 }
 _MATRICES = {"causal": "C", "link": "L"}
-_PARTS = {"symmetric": r"{0}+{0}^{{\mathrm{{T}}}}", "antisymmetric": r"i({0}-{0}^{{\mathrm{{T}}}})"}
+# A self-adjoint A is A₊ − A₋, its parts of either sign; |M| = (MᵀM)^½ has the singular values of M.
+_PARTS = {
+    "symmetric": r"{0}+{0}^{{\mathrm{{T}}}}",
+    "symmetric-positive": r"({0}+{0}^{{\mathrm{{T}}}})_{{+}}",
+    "symmetric-negative": r"({0}+{0}^{{\mathrm{{T}}}})_{{-}}",
+    "antisymmetric": r"i({0}-{0}^{{\mathrm{{T}}}})",
+    "singular": r"|{0}|",
+}
 # A piece of text that a line break must not part: mathematics, or a word.
 _PIECES = re.compile(r"(?:[^ $\\]|\\.|\$[^$]*\$)+")
 _ELLIPSIS = "…"
@@ -50,14 +57,24 @@ def is_number(value: Any) -> bool:
 
 
 def operator_symbol(operator: Operator) -> str:
-    """The self-adjoint matrix whose spectrum is shown, as mathematics."""
-    matrix = _MATRICES.get(operator.matrix, rf"\mathrm{{{operator.matrix.replace('_', '-')}}}")
-    return f"${_PARTS[operator.part].format(matrix)}$"
+    """The self-adjoint matrix whose eigenvalues are ranked, as mathematics."""
+    return f"${_PARTS[operator.part].format(_matrix(operator))}$"
 
 
 def operator_label(operator: Operator) -> str:
     """The operator in words, then as mathematics."""
     return f"{plain(operator.matrix)}, {operator.part}: {operator_symbol(operator)}"
+
+
+def magnitudes_label(operator: Operator) -> str:
+    """What is ranked, as the label of an axis."""
+    if operator.part == "singular":
+        return f"singular values $s_r$ of ${_matrix(operator)}$"
+    return f"eigenvalues $|\\lambda_r|$ of {operator_symbol(operator)}"
+
+
+def _matrix(operator: Operator) -> str:
+    return _MATRICES.get(operator.matrix, rf"\mathrm{{{operator.matrix.replace('_', '-')}}}")
 
 
 def inverse_power(omega: float) -> str:

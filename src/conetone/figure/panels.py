@@ -99,12 +99,50 @@ def new_page(
         made[0].set_title(title)
         panels.append(Panel(tuple(made), column == 0, outer_bottom))
     if not panels:
-        empty = figure.add_subplot(grid[:, 0])
-        no_ticks(empty)
-        empty.text(0.5, 0.5, "no series", ha="center", va="center", transform=empty.transAxes)
+        _say_no_series(figure, grid[:, 0])
     free = count % columns
     free_cell = grid[(rows - 1) * stack :, free] if free else None
     return Page(figure, tuple(panels), inches, free_cell)
+
+
+def new_rows(titles: Sequence[str], stacks: Sequence[Sequence[float]]) -> Page:
+    """A page of one row for each title, as wide as print allows: a panel for each of the stacks of axes.
+
+    A stack is as many heights in inches as the longest one, or one axes beside it. Panels come row by row;
+    those of a column have a common x axis, with tick labels below the last row.
+    """
+    count, levels = len(titles), max(map(len, stacks))
+    heights = next(stack for stack in stacks if len(stack) == levels)
+    wrapped_titles = [wrapped(title, 0.95 * PAGE_INCHES, FONT_POINTS, _MOST_TITLE_LINES) for title in titles]
+    lines = sum(title.count("\n") + 1 for title in wrapped_titles)
+    rows = max(count, 1)
+    height = rows * (sum(heights) + 0.1 * levels) + lines * _LINE_INCHES + _MARGIN_INCHES
+    figure = new_figure(PAGE_INCHES, height, gap=0.12)
+    grid = figure.add_gridspec(rows * levels, len(stacks), height_ratios=list(heights) * rows)
+    panels: list[Panel] = []
+    for row, title in enumerate(wrapped_titles):
+        for column, stack in enumerate(stacks):
+            cells = [grid[row * levels + i, column] for i in range(levels)]
+            if len(stack) == 1:
+                cells = [grid[row * levels : (row + 1) * levels, column]]
+            made: list[Axes] = []
+            for cell in cells:
+                first = panels[column].axes[0] if panels[column:] else None
+                made.append(figure.add_subplot(cell, sharex=first or (made[0] if made else None)))
+                lowest = len(made) == len(cells) and row == count - 1
+                made[-1].tick_params(labelbottom=lowest)
+            if column == len(stacks) // 2:
+                made[0].set_title(title)
+            panels.append(Panel(tuple(made), column == 0, row == count - 1))
+    if not panels:
+        _say_no_series(figure, grid[:, :])
+    return Page(figure, tuple(panels), PAGE_INCHES / len(stacks) - _MARGIN_INCHES, None)
+
+
+def _say_no_series(figure: Figure, cell: Any) -> None:
+    empty = figure.add_subplot(cell)
+    no_ticks(empty)
+    empty.text(0.5, 0.5, "no series", ha="center", va="center", transform=empty.transAxes)
 
 
 def log_x(axes: Axes) -> None:

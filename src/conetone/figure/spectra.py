@@ -11,7 +11,7 @@ from matplotlib.lines import Line2D
 from matplotlib.ticker import FixedLocator, NullFormatter
 
 from conetone.figure.closing import ClosingTables, Operator, Row, layer, of_series
-from conetone.figure.labels import ensemble_label, operator_symbol
+from conetone.figure.labels import ensemble_label, magnitudes_label
 from conetone.figure.panels import (
     PLAIN_NUMBERS,
     add_legend,
@@ -75,7 +75,7 @@ def draw_spectra(numbers: pd.DataFrame, tables: ClosingTables, operator: Operato
         if panel.outer_bottom:
             below.set_xlabel("rank $r$")
         if panel.outer_left:
-            above.set_ylabel(f"eigenvalues $|\\lambda_r|$ of {operator_symbol(operator)}")
+            above.set_ylabel(magnitudes_label(operator))
             below.set_ylabel("residual / $\\sigma$")
     if not layer(numbers, "spectrum").empty:
         above, below = page.panels[0].axes
@@ -87,10 +87,19 @@ def draw_spectra(numbers: pd.DataFrame, tables: ClosingTables, operator: Operato
         add_note(
             page.figure,
             "Points: geometric mean over replicates and bins of ranks.",
-            "Residual: (mean − fit) of $\\log\\,|\\lambda_r|$ over its statistical error $\\sigma$;",
+            _residuals_in_words(tables),
             f"axis linear up to ±{LINEAR_UP_TO}, logarithmic beyond.",
         )
     return page.figure
+
+
+def _residuals_in_words(tables: ClosingTables) -> str:
+    if any(row["estimator"] == "smooth-count" for row in tables.bins):
+        return (
+            "Residual: (mean − fit) of $\\log\\,\\Lambda$ at smooth ranks over its statistical error $\\sigma$,"
+            " at the rank where a power law has $|\\lambda_r| = \\Lambda$;"
+        )
+    return "Residual: (mean − fit) of $\\log\\,|\\lambda_r|$ over its statistical error $\\sigma$;"
 
 
 def _draw_size(axes: tuple[Axes, ...], numbers: pd.DataFrame, series: str, size: int, look: Look) -> None:

@@ -17,8 +17,11 @@ def window_rows(keys: Row, bins: Sequence[Row]) -> list[dict[str, Any]]:
     if not fitted:
         return []
     size = max(row["size"] for row in fitted)
-    first = min(row["first_rank"] for row in fitted if row["size"] == size)
-    last = max(row["last_rank"] for row in fitted if row["size"] == size)
+    largest = [row for row in fitted if row["size"] == size]
+    # a smooth count is shown at the rank of the same eigenvalue, and ends where its points do
+    smooth = largest[0]["estimator"] == "smooth-count"
+    first = min(row["rank" if smooth else "first_rank"] for row in largest)
+    last = max(row["rank" if smooth else "last_rank"] for row in largest)
     return [{**keys, "layer": "window", "size": size, "rank": first, "last_rank": last}]
 
 

@@ -5,8 +5,8 @@ import os
 import re
 import subprocess
 import sys
-from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
@@ -24,12 +24,17 @@ MEMORY_SHARE = 0.9
 
 @dataclass(frozen=True)
 class Engine:
-    """How Snakemake is called for one sweep; `folder` is the sweep's own, `options` are passed on."""
+    """How Snakemake is called for one sweep; `folder` is the sweep's own, `options` are passed on.
+
+    `targets`, if not all outputs of the sweep, and `values` of the configuration beside the sweep file.
+    """
 
     sweep_file: Path
     folder: Path
     cores: int
-    options: Sequence[str]
+    options: Sequence[str] = ()
+    targets: Sequence[str] = ()
+    values: Mapping[str, int] = field(default_factory=dict)
 
     @property
     def _base_command(self) -> list[str]:
@@ -37,6 +42,7 @@ class Engine:
             *(sys.executable, "-m", "snakemake", "--snakefile", str(snakefile())),
             *("--configfile", str(self.sweep_file.absolute())),
             *("--config", f"{RESULTS_KEY}={json.dumps(str(self.folder.parent))}"),
+            *(f"{name}={value}" for name, value in self.values.items()),
             *("--cores", str(self.cores)),
         ]
 
@@ -66,11 +72,17 @@ class Engine:
             *("--resources", f"mem_mb={memory}"),
             *("--logger", "conetone", "--logger-conetone-events", str(events)),
             *self.options,
+            *self._asked,
         ]
+
+    @property
+    def _asked(self) -> list[str]:
+        return ["--", *self.targets] if self.targets else []
 
     def attached(self) -> int:
         """Run Snakemake on this terminal, as it is; returns its exit code."""
-        return subprocess.run([*self._base_command, *self.options], cwd=self.folder, check=False).returncode
+        command = [*self._base_command, *self.options, *self._asked]
+        return subprocess.run(command, cwd=self.folder, check=False).returncode
 
     def start(self) -> "RunningEngine":
         """Start Snakemake in a session of its own, so that Ctrl-C reaches only us, who stop it in order."""

@@ -1,9 +1,12 @@
 """A sweep that grew or shrank: blocks of another length keep their rows, tables it no longer names hide."""
 
+from collections.abc import Sequence
 from pathlib import Path
 
 from conetone.errors import TableError
 from conetone.records.files import read_footer, resume_path
+from conetone.sweep.calibration import Calibration
+from conetone.sweep.paths import CALIBRATION_FOLDER
 from conetone.sweep.plan import Job, Plan
 from conetone.sweep.requests import without_replicates
 
@@ -20,8 +23,17 @@ def follow_the_sweep(folder: Path, plan: Plan) -> None:
     jobs take over the rows they still need: Snakemake deletes the outputs of a job before it runs again.
     """
     blocks = [job for stage in ("sprinkle", "diagonalise") for job in plan.jobs[stage].values()]
+    _follow(folder, blocks, DATASETS)
+
+
+def follow_the_calibration(folder: Path, calibration: Calibration) -> None:
+    """The same for blocks of injections: more of them, or fewer, keep what there is."""
+    _follow(folder, list(calibration.jobs["inject"].values()), (CALIBRATION_FOLDER.name,))
+
+
+def _follow(folder: Path, blocks: Sequence[Job], datasets: Sequence[str]) -> None:
     wanted = {job.outputs[0] for job in blocks}
-    for dataset in DATASETS:
+    for dataset in datasets:
         for path in (folder / dataset).glob("*.parquet"):
             if path.relative_to(folder) not in wanted:
                 _move(path, folder / HIDDEN_FOLDER / path.relative_to(folder))

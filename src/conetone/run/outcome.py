@@ -1,7 +1,6 @@
 """What a sweep came to: the closing table, for people and as JSON."""
 
 import json
-import math
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -10,10 +9,11 @@ from rich import box
 from rich.console import Console
 from rich.table import Table
 
+from conetone.figure.cells import format_expected, format_replicates, format_sizes, format_value, numbered
 from conetone.records.files import read_rows
 from conetone.run.progress import duration
 from conetone.sprinkle.catalogue import PARAMETER_NAMES
-from conetone.sweep.paths import CLOSING_TABLES, closing_path, figure_paths
+from conetone.sweep.paths import CLOSING_TABLES, LATEX_TABLE, closing_path, figure_paths
 from conetone.sweep.plan import Plan
 from conetone.sweep.points import EnsembleChoice
 
@@ -85,6 +85,8 @@ def print_table(outcome: Outcome) -> None:
     console.print(f"Figures: {outcome.folder / 'figures'}", soft_wrap=True)
     for path in outcome.figures:
         console.print(f"         {path.stem} (.pdf .png .csv)", soft_wrap=True)
+    if (outcome.folder / LATEX_TABLE).exists():
+        console.print(f"LaTeX:   {outcome.folder / LATEX_TABLE}", soft_wrap=True)
 
 
 def _table(title: str, rows: list[dict[str, Any]], notes: dict[str, int]) -> Table:
@@ -109,14 +111,13 @@ def _lines(title: str, rows: list[dict[str, Any]], notes: dict[str, int]) -> str
 
 
 def _cells(row: dict[str, Any], notes: dict[str, int]) -> tuple[str, ...]:
-    marks = [notes.setdefault(warning, len(notes) + 1) for warning in _notes(row)]
     return (
         ensemble_label(row),
         format_value(row["exponent"], row["statistical"], row["systematic"]),
-        _expected(row),
-        _sizes(row["sizes"]),
-        f"{row['replicates_used']}/{row['replicates_attempted']}",
-        " ".join(f"[{mark}]" for mark in marks),
+        format_expected(row),
+        format_sizes(row["sizes"]),
+        format_replicates(row),
+        " ".join(f"[{mark}]" for mark in numbered(row, notes)),
     )
 
 
@@ -146,32 +147,3 @@ def ensemble_label(row: dict[str, Any]) -> str:
     """`minkowski-diamond, dimension 3`."""
     given = {name: row[name] for name in PARAMETER_NAMES if row[name] is not None}
     return EnsembleChoice(row["ensemble"], tuple(given.items()), row["count"]).label
-
-
-def format_value(value: float | None, statistical: float | None, systematic: float | None) -> str:
-    """`0.6910(30)(570)`: the larger error to two digits, both in units of the last digit."""
-    if value is None or statistical is None or systematic is None:
-        return "none"
-    larger = max(statistical, systematic)
-    if not (larger > 0 and math.isfinite(larger)):
-        return f"{value:.6f}"
-    decimals = max(0, 1 - int(f"{larger:.1e}".partition("e")[2]))
-    unit = 10**decimals
-    return f"{value:.{decimals}f}({round(statistical * unit)})({round(systematic * unit)})"
-
-
-def _expected(row: dict[str, Any]) -> str:
-    if row["expected"] is None:
-        return ""
-    deviation = f", {row['deviation']:+.1f} σ" if row["deviation"] is not None else ""
-    return f"{row['expected']:.4g} {row['expected_standing']}{deviation}"
-
-
-def _sizes(sizes: list[int]) -> str:
-    return (
-        f"{sizes[0]}…{sizes[-1]} ({len(sizes)})" if len(sizes) > 1 else ", ".join(map(str, sizes)) or "none"
-    )
-
-
-def _notes(row: dict[str, Any]) -> list[str]:
-    return ([row["reason"]] if row["reason"] else []) + list(row["warnings"])

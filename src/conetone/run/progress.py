@@ -10,7 +10,8 @@ from typing import Any, Protocol
 from rich.console import Console
 from rich.progress import BarColumn, Progress, TextColumn
 
-from conetone.sweep.plan import STAGES, Job, Plan
+from conetone.sweep.calibration import Calibration
+from conetone.sweep.plan import Job, Plan
 
 # A line of plain text at most this often, when the output is no terminal.
 PLAIN_SECONDS = 10.0
@@ -20,7 +21,7 @@ BLOCK_NUMBER, HASH = re.compile("b[0-9]+"), re.compile("[0-9a-f]{8}")
 class Tally:
     """Jobs planned, running, finished and failed, from Snakemake's events; times in seconds."""
 
-    def __init__(self, plan: Plan, folder: Path, cores: int) -> None:
+    def __init__(self, plan: Plan | Calibration, folder: Path, cores: int) -> None:
         self._plan, self._cores = plan, cores
         self._missing = plan.missing(folder)
         self._described: dict[int, tuple[str, str]] = {}
@@ -34,11 +35,11 @@ class Tally:
     def take(self, event: Mapping[str, Any]) -> None:
         """Count one event."""
         if event["event"] == "planned":
-            counts = {stage: count for stage, count in event["jobs"].items() if stage in STAGES}
+            counts = {stage: count for stage, count in event["jobs"].items() if stage in self._plan.jobs}
             self.total = sum(counts.values())
             self._forecast = sum(self._stage_forecast(stage, count) for stage, count in counts.items())
             self._start = time.monotonic()
-        elif event["event"] == "described" and event["rule"] in STAGES:
+        elif event["event"] == "described" and event["rule"] in self._plan.jobs:
             self._described[event["job"]] = (event["rule"], event["name"].replace(" ", ".") or "all")
         elif event["event"] == "started":
             self._running.update(dict.fromkeys(event["jobs"], time.monotonic()))

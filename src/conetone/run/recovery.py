@@ -11,6 +11,7 @@ from conetone.records.files import RESUME_FOLDER
 from conetone.run.engine import Engine
 from conetone.run.growth import to_resume
 from conetone.run.processes import processes_of, snakemake_started_by_hand, stop
+from conetone.sweep.paths import CALIBRATION_FOLDER
 
 SNAKEMAKE_LOCKS = Path(".snakemake") / "locks"
 SNAKEMAKE_INCOMPLETE = Path(".snakemake") / "incomplete"
@@ -50,7 +51,8 @@ def recover(folder: Path, engine: Engine) -> list[str]:
 
 def partial_files(folder: Path) -> list[Path]:
     """Files that a killed job was writing: they never had their name, so nothing ever read them."""
-    homes = (Path(), Path("orders"), Path("spectra"), Path("pieces"), Path("figures"), Path(RESUME_FOLDER))
+    names = ("orders", "spectra", "pieces", "figures", RESUME_FOLDER)
+    homes = (Path(), CALIBRATION_FOLDER, *map(Path, names))
     deep = [folder / RESUME_FOLDER / home for home in homes]
     return [path for home in [*(folder / home for home in homes), *deep] for path in home.glob(".*.part")]
 

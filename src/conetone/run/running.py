@@ -23,6 +23,7 @@ from conetone.run.processes import processes_of, stop
 from conetone.run.progress import Display, LiveDisplay, NoDisplay, PlainDisplay, Tally
 from conetone.run.recovery import recover
 from conetone.sweep.definition import load_sweep
+from conetone.sweep.paths import CALIBRATION_FOLDER
 from conetone.sweep.plan import Plan
 
 # Compiles kernels; yields (name of the next one, its number from 0, number of all) before each.
@@ -52,7 +53,7 @@ def run_sweep(
     start = time.monotonic()
     plan = Plan(load_sweep(sweep_file))
     folder = (results / plan.sweep.name).resolve()
-    engine = Engine(sweep_file, folder, cores or _all_cores(), tuple(snakemake_options))
+    engine = Engine(sweep_file, folder, cores or all_cores(), tuple(snakemake_options))
     with run_lock(folder):
         notes = recover(folder, engine)
         follow_the_sweep(folder, plan)
@@ -65,10 +66,10 @@ def run_sweep(
         if plan.missing(folder, "sprinkle") or plan.missing(folder, "diagonalise"):
             with _interruptions_explained():
                 show_compiling(compile_kernels(), quiet=quiet)
-        _work(engine, tally, _display(quiet))
+        work(engine, tally, quiet=quiet)
         if not plan.missing(folder):
             # rows that no job asked for: with options that stop early, jobs may still come for theirs
-            shutil.rmtree(folder / RESUME_FOLDER, ignore_errors=True)
+            clear_resume_folder(folder, kept=CALIBRATION_FOLDER.name)
         outcome = Outcome.read(folder, plan, jobs_run=tally.done, seconds=time.monotonic() - start)
     if as_json:
         print_json(outcome)
@@ -77,9 +78,18 @@ def run_sweep(
     return 1 if outcome.replicates_lost else 0
 
 
-def _all_cores() -> int:
+def all_cores() -> int:
     """Cores that this process may use."""
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def clear_resume_folder(folder: Path, *, kept: str) -> None:
+    """Drop waiting rows that no job asks for any more; those of one dataset stay."""
+    for waiting in (folder / RESUME_FOLDER).glob("*"):
+        if waiting.is_dir() and waiting.name != kept:
+            shutil.rmtree(waiting, ignore_errors=True)
+        elif waiting.is_file():
+            waiting.unlink(missing_ok=True)
 
 
 def _display(quiet: bool) -> Display:
@@ -89,7 +99,9 @@ def _display(quiet: bool) -> Display:
     return LiveDisplay(console) if console.is_terminal else PlainDisplay()
 
 
-def _work(engine: Engine, tally: Tally, display: Display) -> None:
+def work(engine: Engine, tally: Tally, *, quiet: bool) -> None:
+    """Let Snakemake work to the end, showing progress; raises as `run_sweep` does."""
+    display = _display(quiet)
     running: RunningEngine | None = None
     try:
         with _signals_as_interrupts():

@@ -8,24 +8,29 @@ from typing import Any
 
 import conetone
 from conetone.errors import ConetoneError
+from conetone.sweep.calibration import DEFAULT_INJECTIONS, Calibration
 from conetone.sweep.definition import resolve_sweep
 from conetone.sweep.plan import Plan
 
 RESULTS_KEY = "results"
+# Of a calibration: how many injections, and their seed, else the sweep's.
+INJECTIONS_KEY, SEED_KEY = "injections", "injection_seed"
 # Environment of every job of a sweep: its folder. Of everything that `conetone run` starts: the run.
 FOLDER_MARK, RUN_MARK = "CONETONE_FOLDER", "CONETONE_RUN"
 DEFAULT_RESULTS = "results"
 
 
-def plan_of_config(config: dict[str, Any]) -> tuple[Plan, str]:
-    """The plan of Snakemake's merged configuration, and the folder of the sweep's results.
+def plan_of_config(config: dict[str, Any]) -> tuple[Plan, Calibration, str]:
+    """The plan of Snakemake's merged configuration, its calibration, and the folder of the sweep's results.
 
-    `results` beside the fields of the sweep file is the folder that holds one folder per sweep.
+    Beside the fields of the sweep file `results` is the folder that holds one folder per sweep; `injections`
+    and `injection_seed` are of a calibration.
     """
     from snakemake.exceptions import WorkflowError
 
     values = {key: _plain(value) for key, value in config.items()}
     results = values.pop(RESULTS_KEY, DEFAULT_RESULTS)
+    injections, seed = values.pop(INJECTIONS_KEY, DEFAULT_INJECTIONS), values.pop(SEED_KEY, None)
     if not values:
         raise WorkflowError("No sweep: add --configfile SWEEP.yaml, such as config/first-look.yaml.")
     try:
@@ -33,7 +38,8 @@ def plan_of_config(config: dict[str, Any]) -> tuple[Plan, str]:
     except ConetoneError as error:
         raise WorkflowError(str(error)) from None
     folder = Path(str(results)) / plan.sweep.name
-    return plan, str(folder.resolve())
+    calibration = Calibration(plan, int(injections), plan.sweep.root_seed if seed is None else int(seed))
+    return plan, calibration, str(folder.resolve())
 
 
 def _plain(value: Any) -> Any:

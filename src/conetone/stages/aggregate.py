@@ -6,20 +6,18 @@ from typing import Any
 
 import numpy as np
 
-from conetone.aggregate.resample import Candidate, Measured, measure, stack_copies
-from conetone.aggregate.scaling import (
-    SMALLEST_NUMBER_OF_SIZES,
-    Extrapolation,
-    average_at_sizes,
-    extrapolate,
-)
+from conetone.aggregate.resample import Candidate, Measured
+from conetone.aggregate.series import SeriesExponent, series_exponent
+from conetone.fit.logs import Estimator
 from conetone.fit.models import MODELS
 from conetone.fit.powerlaw import Estimates
+from conetone.fit.size import ESTIMATORS
+from conetone.fit.windows import WindowRule
 from conetone.records.files import inputs_digest, read_rows
 from conetone.records.tables import SERIES_KEYS, Row
-from conetone.reference.exponents import ExpectedExponent, expected_exponent
-from conetone.sprinkle.catalogue import ENSEMBLES, PARAMETER_NAMES
-from conetone.stages.warnings import warnings_of
+from conetone.stages.amplitudes import amplitude_rows
+from conetone.stages.diagnostics import diagnostic_rows
+from conetone.stages.exponents import add_dimensions, add_warnings, difference_rows, exponent_row
 from conetone.stages.whole import taken_up, write_all
 from conetone.sweep.paths import CLOSING_TABLES, PIECE_TABLES, closing_path, piece_path
 from conetone.sweep.requests import AggregateRequest
@@ -37,81 +35,115 @@ def aggregate_sweep(request: AggregateRequest) -> None:
     if taken_up(outputs, request.text(), inputs):
         return
     tables: dict[str, list[Row]] = {table: [] for table in CLOSING_TABLES}
+    exponents: list[dict[str, Any]] = []
     for name in request.series:
-        tables["bins"] += read_rows(piece_path(name, "bins"))
-        tables["profiles"] += read_rows(piece_path(name, "profiles"))
-        for table, rows in _series_tables(read_rows(piece_path(name, "fits")), request.extrapolation).items():
-            tables[table] += rows
+        for table in ("bins", "profiles"):
+            tables[table] += read_rows(piece_path(name, table))
+        series = SeriesRows(read_rows(piece_path(name, "fits")), read_rows(piece_path(name, "cutoffs")))
+        results = {estimator: series.exponent(estimator, request.extrapolation) for estimator in ESTIMATORS}
+        quoted = results[request.estimator]
+        exponents.append(exponent_row(series.fits, request, results))
+        tables["fits"] += series.weighted_fits(results, request.estimator)
+        tables["extrapolations"] += _curve_rows(series.keys, quoted, request.extrapolation)
+        tables["amplitudes"] += amplitude_rows(
+            series.keys, series.cutoffs, request.extrapolation.most_sizes_cut
+        )
+        tables["diagnostics"] += diagnostic_rows(
+            series.keys, quoted, request.extrapolation, read_rows(piece_path(name, "profiles"))
+        )
+    add_dimensions(exponents)
+    add_warnings(exponents)
+    tables["exponents"] += exponents
+    tables["differences"] += difference_rows(exponents)
     write_all(outputs, tables, request.text(), inputs)
 
 
 @dataclass(frozen=True)
-class _Series:
-    """The fits of one series, by size and candidate; `sizes` are those with at least one fit."""
+class SeriesRows:
+    """The pieces of one series: rows of `fits` and `cutoffs`."""
 
     fits: list[dict[str, Any]]
-    sizes: list[int]
-    replicates: dict[int, list[int]]
-    candidates: list[tuple[str, str]]
+    cutoffs: list[dict[str, Any]]
 
+    @property
     def keys(self) -> dict[str, Any]:
+        """The key columns of the series."""
         return {column.name: self.fits[0][column.name] for column in SERIES_KEYS}
+
+    @property
+    def sizes(self) -> list[int]:
+        """Sizes at which either estimator has a fit: copies of both are laid out over them."""
+        return sorted({fit["size"] for fit in self.fits if fit["status"] == "ok"})
 
     def of_size(self, size: int) -> dict[str, Any]:
         """Any fit of that size, for the columns they share."""
         return next(fit for fit in self.fits if fit["size"] == size)
 
+    def exponent(self, estimator: Estimator, settings: ExtrapolationSettings) -> SeriesExponent | None:
+        """The series by one estimator; None if that has no fit at any size."""
+        mine = [fit for fit in self.fits if fit["estimator"] == estimator]
+        if not any(fit["status"] == "ok" for fit in mine):
+            return None
+        names = list(dict.fromkeys((fit["window"], fit["model"]) for fit in mine))
+        replicates = [len(self.of_size(size)["copies_replicate"]) for size in self.sizes]
+        candidates = [_candidate(mine, name, self.sizes) for name in names]
+        return series_exponent(self.sizes, replicates, candidates, settings.omegas, settings.most_sizes_cut)
 
-def _collect(fits: list[dict[str, Any]]) -> _Series:
-    return _Series(
-        fits,
-        sorted({fit["size"] for fit in fits if fit["status"] == "ok"}),
-        {fit["size"]: fit["copies_replicate"] for fit in fits},
-        list(dict.fromkeys((fit["window"], fit["model"]) for fit in fits)),
-    )
+    def weighted_fits(self, results: dict[Estimator, SeriesExponent | None], quoted: Estimator) -> list[Row]:
+        """The fits with their weights, and the averages of the quoted estimator at each size."""
+        for estimator, result in results.items():
+            mine = [fit for fit in self.fits if fit["estimator"] == estimator]
+            if result is None or result.found is None:
+                continue
+            names = list(dict.fromkeys((fit["window"], fit["model"]) for fit in mine))
+            weights = dict(zip(names, result.found.weights, strict=True))
+            for fit in mine:
+                if fit["status"] == "ok":
+                    fit["weight"] = float(weights[fit["window"], fit["model"]])
+        result = results[quoted]
+        return [*self.fits, *(self._average_rows(result, quoted) if result else [])]
+
+    def _average_rows(self, result: SeriesExponent, estimator: Estimator) -> list[Row]:
+        averages, first = result.at_sizes, 0
+        rows: list[Row] = []
+        for s, (size, count) in enumerate(zip(result.sizes, result.replicates, strict=True)):
+            if size in result.fitted_sizes:
+                mine = (fit for fit in self.fits if (fit["size"], fit["estimator"]) == (size, estimator))
+                rows.append(_average_row(next(mine), averages, s, slice(first, first + count)))
+            first += count
+        return rows
 
 
-def _series_tables(fits: list[dict[str, Any]], settings: ExtrapolationSettings) -> dict[str, list[Row]]:
-    series = _collect(fits)
-    if not series.sizes:
-        return {
-            "fits": list(fits),
-            "exponents": [_exponent_row(series, settings, None, None, "no size has a fit: see fits.parquet")],
-        }
-    replicates = [len(series.replicates[size]) for size in series.sizes]
-    estimates = stack_copies(series.sizes, replicates, [_candidate(series, c) for c in series.candidates])
-    found = extrapolate(estimates, settings.omegas, settings.most_sizes_cut)
-    if found is None:
-        averages = measure(average_at_sizes(estimates), replicates)
-        reason = f"{len(series.sizes)} usable sizes; extrapolation takes {SMALLEST_NUMBER_OF_SIZES}"
-        if len(series.sizes) >= SMALLEST_NUMBER_OF_SIZES:
-            reason = f"no window has fits at {SMALLEST_NUMBER_OF_SIZES} sizes, the largest among them"
-        row = _exponent_row(series, settings, None, None, reason)
-        return {"fits": [*fits, *_average_rows(series, averages, replicates)], "exponents": [row]}
-    omega = settings.omegas[int(found.omega_weights.argmax())]
-    curve = _curve_sizes(series.sizes, omega)
-    weights = dict(zip(series.candidates, found.weights, strict=True))
-    for fit in fits:
-        fit["weight"] = float(weights[fit["window"], fit["model"]]) if fit["status"] == "ok" else None
-    averages = measure(found.at_sizes, replicates)
-    limit = measure(found.limit, replicates)
+def _average_row(template: Row, averages: Measured, s: int, copies: slice) -> Row:
+    known = bool(np.isfinite(averages.value[s]))
+    reason = "no candidate of this size has a fit at the largest size, which weights need"
+    of_one_fit = (
+        "chi2", "degrees", "bins_cut", "parameters", "statistical_copies", "misfit_copies", "chi2_copies",
+        "weight",
+    )  # fmt: skip
     return {
-        "fits": [*fits, *_average_rows(series, averages, replicates)],
-        "exponents": [_exponent_row(series, settings, found, limit, None)],
-        "extrapolations": _curve_rows(series, omega, curve, measure(found.at(curve), replicates)),
+        **template,
+        **dict.fromkeys(of_one_fit),
+        "window": "average",
+        "model": "average",
+        "exponent": float(averages.value[s]) if known else None,
+        "statistical": float(averages.statistical[s]) if known else None,
+        "misfit": float(averages.systematic[s]) if known else None,
+        "copies": averages.copies[copies, s] if known else None,
+        "status": "ok" if known else "failed",
+        "reason": None if known else reason,
     }
 
 
-def _candidate(series: _Series, candidate: tuple[str, str]) -> Candidate:
+def _candidate(fits: list[dict[str, Any]], name: tuple[str, str], sizes: Sequence[int]) -> Candidate:
     by_size = {
-        fit["size"]: fit
-        for fit in series.fits
-        if (fit["window"], fit["model"]) == candidate and fit["status"] == "ok"
+        fit["size"]: fit for fit in fits if (fit["window"], fit["model"]) == name and fit["status"] == "ok"
     }
     return Candidate(
-        MODELS[candidate[1]].parameters,
-        [_estimates(by_size[size]) if size in by_size else None for size in series.sizes],
-        [by_size[size]["bins_cut"] if size in by_size else 0 for size in series.sizes],
+        MODELS[name[1]].parameters,
+        [_estimates(by_size[size]) if size in by_size else None for size in sizes],
+        [by_size[size]["bins_cut"] if size in by_size else 0 for size in sizes],
+        WindowRule.parse(name[0]).log_rank(sizes[-1]),
     )
 
 
@@ -127,52 +159,19 @@ def _estimates(fit: dict[str, Any]) -> Estimates:
     )
 
 
-def _curve_sizes(sizes: Sequence[int], omega: float) -> Any:
-    abscissa = np.linspace(0, sizes[0] ** -omega * 1.05, CURVE_POINTS)
+def _curve_rows(
+    keys: dict[str, Any], result: SeriesExponent | None, settings: ExtrapolationSettings
+) -> list[Row]:
+    if result is None or result.found is None:
+        return []
+    omega = settings.omegas[int(result.found.omega_weights.argmax())]
+    abscissa = np.linspace(0, result.fitted_sizes[0] ** -omega * 1.05, CURVE_POINTS)
     with np.errstate(divide="ignore"):
-        return abscissa ** (-1 / omega)
-
-
-def _average_rows(series: _Series, averages: Measured, replicates: Sequence[int]) -> list[Row]:
-    rows: list[Row] = []
-    first = 0
-    for s, (size, count) in enumerate(zip(series.sizes, replicates, strict=True)):
-        template = series.of_size(size)
-        known = bool(np.isfinite(averages.value[s]))
-        reason = "no candidate of this size has a fit at the largest size, which weights need"
-        rows.append(
-            {
-                **template,
-                "window": "average",
-                "model": "average",
-                "exponent": float(averages.value[s]) if known else None,
-                "statistical": float(averages.statistical[s]) if known else None,
-                "misfit": float(averages.systematic[s]) if known else None,
-                "copies": averages.copies[first : first + count, s] if known else None,
-                "weight": None,
-                **dict.fromkeys(
-                    (
-                        "chi2",
-                        "degrees",
-                        "bins_cut",
-                        "parameters",
-                        "statistical_copies",
-                        "misfit_copies",
-                        "chi2_copies",
-                    )
-                ),
-                "status": "ok" if known else "failed",
-                "reason": None if known else reason,
-            }
-        )
-        first += count
-    return rows
-
-
-def _curve_rows(series: _Series, omega: float, sizes: Any, curve: Measured) -> list[Row]:
+        sizes = abscissa ** (-1 / omega)
+    curve = result.curve(sizes)
     return [
         {
-            **series.keys(),
+            **keys,
             "size": float(size),
             "omega": omega,
             "exponent": float(curve.value[i]),
@@ -181,57 +180,3 @@ def _curve_rows(series: _Series, omega: float, sizes: Any, curve: Measured) -> l
         }
         for i, size in enumerate(sizes)
     ]
-
-
-def _exponent_row(
-    series: _Series,
-    settings: ExtrapolationSettings,
-    found: Extrapolation | None,
-    limit: Measured | None,
-    reason: str | None,
-) -> Row:
-    keys = series.keys()
-    expected = _expected(keys)
-    largest = series.of_size(series.sizes[-1]) if series.sizes else series.fits[-1]
-    by_size = {fit["size"]: fit for fit in series.fits}
-    row: dict[str, Any] = {
-        **keys,
-        "exponent": float(limit.value[0]) if limit else None,
-        "statistical": float(limit.statistical[0]) if limit else None,
-        "systematic": float(limit.systematic[0]) if limit else None,
-        "reduced_chi2": found.reduced_chi2 if found else None,
-        "scatter": max((by_size[size]["scatter"] for size in series.sizes), default=None),
-        "sizes": series.sizes,
-        "replicates_used": sum(by_size[size]["replicates_used"] for size in series.sizes),
-        "replicates_failed": sum(fit["replicates_failed"] for fit in by_size.values()),
-        "replicates_attempted": sum(fit["replicates_attempted"] for fit in by_size.values()),
-        "expected": expected.value if expected else None,
-        "expected_standing": expected.standing if expected else None,
-        "expected_source": expected.source if expected else None,
-        "deviation": (float(limit.value[0]) - expected.value) / float(limit.total[0])
-        if limit and expected
-        else None,
-        "ordering_fraction": largest["ordering_fraction"],
-        "ordering_fraction_error": largest["ordering_fraction_error"],
-        "ordering_fraction_expected": _expected_ordering_fraction(keys),
-        "omegas": list(settings.omegas),
-        "omega_weights": found.omega_weights if found else None,
-        "copies": limit.copies[:, 0] if limit else None,
-        "copies_size": [size for size in series.sizes for _ in series.replicates[size]],
-        "copies_replicate": [replicate for size in series.sizes for replicate in series.replicates[size]],
-        "status": "failed" if reason else "ok",
-        "reason": reason,
-    }
-    left_out = [size for size in by_size if size not in series.sizes]
-    return {**row, "warnings": warnings_of(row, left_out, expected.caveat if expected else None)}
-
-
-def _expected(keys: dict[str, Any]) -> ExpectedExponent | None:
-    region = ENSEMBLES[keys["ensemble"]].region
-    return expected_exponent(keys["matrix"], keys["part"], region, keys["dimension"])
-
-
-def _expected_ordering_fraction(keys: dict[str, Any]) -> float | None:
-    known = ENSEMBLES[keys["ensemble"]].ordering_fraction
-    given = {name: keys[name] for name in PARAMETER_NAMES if keys[name] is not None}
-    return known(given) if known else None

@@ -34,22 +34,24 @@ def run_block(
     still_valid: Callable[[Row], bool],
     inputs: str = "",
     own_process: bool = False,
+    number: str = "replicate",
 ) -> None:
     """Fill a block's table, beginning with the rows that an earlier, interrupted job left.
 
     `compute(replicate)` gives the result columns; `empty(replicate)` the key columns with all results
     null, for a replicate that fails. Rows are taken over if they answer the same request, the range of
     replicates aside, and `still_valid(row)`. Raises InterruptedRunError after SIGTERM or SIGINT, with every
-    finished row in the resume folder. `own_process` says that the process ends with this job.
+    finished row in the resume folder. `own_process` says that the process ends with this job. `number` names
+    the column that counts rows, where these are no replicates.
     """
     waiting = resume_path(output)
     rows = {
-        row["replicate"]: row
+        row[number]: row
         for row in _finished_rows(waiting, request)
-        if row["replicate"] in replicates and still_valid(row)
+        if row[number] in replicates and still_valid(row)
     }
     for replicate in sorted(rows):
-        log(f"kept replicate {replicate} of an interrupted job")
+        log(f"kept {number} {replicate} of an interrupted job")
     saved = time.monotonic()
 
     def save(path: Path) -> None:
@@ -63,7 +65,7 @@ def run_block(
                 if replicate in rows:
                     continue
                 rows[replicate] = _one_row(replicate, compute, empty)
-                log(f"computed replicate {replicate}")
+                log(f"computed {number} {replicate}")
                 if time.monotonic() - saved > SAVE_SECONDS:
                     save(waiting)
                     saved = time.monotonic()
@@ -71,10 +73,8 @@ def run_block(
             waiting.unlink(missing_ok=True)
         except StopRequested as stopped:
             save(waiting)
-            log(f"stopped by {stopped}; {len(rows)} of {len(replicates)} replicates are kept")
-            raise InterruptedRunError(
-                f"stopped by {stopped}; finished replicates wait in {waiting}"
-            ) from None
+            log(f"stopped by {stopped}; {len(rows)} of {len(replicates)} {number}s are kept")
+            raise InterruptedRunError(f"stopped by {stopped}; finished {number}s wait in {waiting}") from None
 
 
 def _one_row(replicate: int, compute: Compute, empty: Compute) -> dict[str, Any]:

@@ -1,4 +1,4 @@
-"""Stage fit: one series at all its sizes."""
+"""Stage fit: one series at all its sizes, by both estimators."""
 
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -8,11 +8,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from conetone.fit.average import information_criterion
-from conetone.fit.models import MODELS
-from conetone.fit.powerlaw import DataVector, PowerLawFit, fit_power_law
+from conetone.fit.logs import smooth_logs, standard_error
+from conetone.fit.models import EXPONENT
+from conetone.fit.powerlaw import DataVector, PowerLawFit
 from conetone.fit.profile import profile
-from conetone.fit.ranking import bin_logs, ranked_magnitudes, standard_error
-from conetone.fit.windows import WindowRule, bins_of_windows
+from conetone.fit.ranking import ranked_magnitudes
+from conetone.fit.size import ESTIMATORS, SizeSpectra, fit_size
+from conetone.fit.smoothcount import SmoothRanks, smooth_share
+from conetone.fit.windows import RankBins, WindowRule
 from conetone.records.files import inputs_digest, read_rows
 from conetone.records.tables import Row
 from conetone.sprinkle.catalogue import PARAMETER_NAMES
@@ -22,7 +25,10 @@ from conetone.sweep.requests import FitRequest
 
 # Bins of a whole spectrum for display.
 PROFILE_BINS = 36
-SMALLEST_NUMBER_OF_BINS = 4
+# Smooth ranks at which cut-offs are extrapolated to infinite size, for the amplitudes: two an octave.
+CUTOFF_RANKS = tuple(4 * 2 ** (i / 2) for i in range(13))
+# Spectra flatter than this fall too slowly for a rank at which λ = Λ to mean much.
+FLATTEST_SHOWN = 0.5
 SPECTRA_COLUMNS = [
     "replicate",
     "leading_count",
@@ -50,17 +56,19 @@ def fit_series(request: FitRequest) -> None:
 
 
 @dataclass(frozen=True)
-class _Usable:
+class UsableSpectra:
     """The spectra of one size that can be ranked."""
 
     replicates: list[int]
     magnitudes: list[NDArray[np.float64]]
     ordering_fractions: NDArray[np.float64]
+    complete: bool
     attempted: int
     failed: int
 
 
-def _usable(request: FitRequest, rows: list[dict[str, Any]]) -> _Usable:
+def usable_spectra(request: FitRequest, rows: list[dict[str, Any]]) -> UsableSpectra:
+    """Those of the rows of one size, from the spectra table, that are ok and have a non-zero eigenvalue."""
     good = [row for row in rows if row["status"] == "ok"]
     ranked = [
         ranked_magnitudes(
@@ -72,17 +80,18 @@ def _usable(request: FitRequest, rows: list[dict[str, Any]]) -> _Usable:
         for row in good
     ]
     kept = [(row, magnitudes) for row, magnitudes in zip(good, ranked, strict=True) if len(magnitudes)]
-    return _Usable(
+    return UsableSpectra(
         [row["replicate"] for row, _ in kept],
         [magnitudes for _, magnitudes in kept],
         np.array([row["ordering_fraction"] for row, _ in kept], dtype=np.float64),
+        complete=all(row["leading_count"] is None for row, _ in kept),
         attempted=len(rows),
         failed=len(rows) - len(good),
     )
 
 
 def _tables_of_size(request: FitRequest, size: int, rows: list[dict[str, Any]]) -> dict[str, list[Row]]:
-    usable = _usable(request, rows)
+    usable = usable_spectra(request, rows)
     keys = {**request.series.key_columns(PARAMETER_NAMES), "size": size}
     shared: dict[str, Any] = {
         **keys,
@@ -94,46 +103,51 @@ def _tables_of_size(request: FitRequest, size: int, rows: list[dict[str, Any]]) 
         "replicates_failed": usable.failed,
         "replicates_attempted": usable.attempted,
     }
-    if len(usable.replicates) < 2:
-        found = f"{len(usable.replicates)} usable of {usable.attempted} replicates; an error bar takes two"
-        return {"fits": _no_fits(request, shared, found), "bins": [], "profiles": []}
-    shared["ordering_fraction"] = float(usable.ordering_fractions.mean())
-    shared["ordering_fraction_error"] = float(standard_error(usable.ordering_fractions))
-    profiles = _profile_rows(keys, usable)
-    ranks = min(len(magnitudes) for magnitudes in usable.magnitudes)
-    windows = {
-        rule: window
-        for rule in request.windows.rules
-        if (window := rule.at(size, request.windows.smallest_rank)).last <= ranks + 1
-        and window.first < window.last
+    enough = len(usable.replicates) >= 2
+    if enough:
+        shared["ordering_fraction"] = float(usable.ordering_fractions.mean())
+        shared["ordering_fraction_error"] = float(standard_error(usable.ordering_fractions))
+    spectra = SizeSpectra(size, usable.magnitudes, usable.complete)
+    tables: dict[str, list[Row]] = {
+        "fits": [],
+        "bins": [],
+        "profiles": _profile_rows(keys, usable) if enough else [],
+        "cutoffs": _cutoff_rows(keys, usable, spectra) if enough else [],
     }
-    bins = bins_of_windows(list(windows.values()), request.windows.bins) if windows else None
-    if bins is None:
-        found = f"{ranks} ranks with non-zero eigenvalues, fewer than any window takes"
-        return {"fits": _no_fits(request, shared, found), "bins": [], "profiles": profiles}
-    if bins.count < SMALLEST_NUMBER_OF_BINS:
-        found = f"{bins.count} bins of rank in the windows; a fit takes {SMALLEST_NUMBER_OF_BINS}"
-        return {"fits": _no_fits(request, shared, found), "bins": [], "profiles": profiles}
-    vector = DataVector.of(bin_logs(usable.magnitudes, bins))
-    shared["scatter"] = float(vector.scatter[0])
-    fits = {
-        (rule, name): fit_power_law(vector, MODELS[name], windows[rule]) if rule in windows else None
-        for rule in request.windows.rules
-        for name in request.windows.models
-    }
-    return {
-        "fits": [_fit_row(shared, rule, model, fit) for (rule, model), fit in fits.items()],
-        "bins": _bin_rows(keys, vector, fits),
-        "profiles": profiles,
-    }
+    for estimator in ESTIMATORS:
+        found = fit_size(spectra, request.windows, estimator)
+        reason = found.reason or "too few ranks, bins or smooth ranks in this window at this size"
+        if not enough:
+            reason = (
+                f"{len(usable.replicates)} usable of {usable.attempted} replicates; an error bar takes two"
+            )
+        scatter = float(found.vector.scatter[0]) if found.vector else None
+        for rule, model in request.windows.candidates:
+            columns = {**shared, "estimator": estimator, "scatter": scatter}
+            tables["fits"].append(_fit_row(columns, rule, model, found.fits.get((rule, model)), reason))
+        if estimator == request.windows.estimator and found.vector:
+            tables["bins"] = _bin_rows({**keys, "estimator": estimator}, found.vector, found.fits)
+    return tables
 
 
-def _no_fits(request: FitRequest, shared: dict[str, Any], reason: str) -> list[Row]:
-    return [
-        _fit_row(shared, rule, model, None, reason)
-        for rule in request.windows.rules
-        for model in request.windows.models
-    ]
+def _cutoff_rows(keys: dict[str, Any], usable: UsableSpectra, spectra: SizeSpectra) -> list[Row]:
+    found = smooth_logs(usable.magnitudes, SmoothRanks(CUTOFF_RANKS), complete=spectra.complete)
+    logs = found.values - np.log(spectra.size)
+    rows: list[Row] = []
+    for rank, values in zip(CUTOFF_RANKS, logs.T, strict=True):
+        if np.isfinite(values).all():
+            mean = float(values.mean())
+            copies = mean + (mean - values) / (len(values) - 1)
+            rows.append(
+                {
+                    **keys,
+                    "smooth_rank": rank,
+                    "log_cutoff": mean,
+                    "copies": copies,
+                    "copies_replicate": usable.replicates,
+                }
+            )
+    return rows
 
 
 def _fit_row(
@@ -141,7 +155,7 @@ def _fit_row(
     rule: WindowRule,
     model: str,
     fit: PowerLawFit | None,
-    reason: str = "too few ranks or bins in this window at this size",
+    reason: str,
 ) -> Row:
     row = {**shared, "window": str(rule), "model": model, "weight": None}
     if fit is None:
@@ -187,17 +201,23 @@ def _bin_rows(
     best = _best(fits)
     fit = fits[best] if best else None
     data = vector.data
-    edges = data.bins.edges
-    ranks = np.exp(data.bins.average(np.log(np.arange(1, data.bins.last + 1))))
+    ranks = data.axis.ranks
+    firsts = lasts = ranks
+    if isinstance(data.axis, RankBins):
+        edges = np.array(data.axis.edges)
+        firsts, lasts = edges[:-1], edges[1:] - 1
+    else:
+        exponent = float(fit.parameters[EXPONENT]) if fit else 1.0
+        ranks = ranks / smooth_share(max(exponent, FLATTEST_SHOWN))
     rows: list[Row] = []
-    for b in range(data.bins.count):
+    for b in range(data.axis.count):
         fitted = float(fit.fitted[b]) if fit and np.isfinite(fit.fitted[b]) else None
         mean, error = float(data.mean[b]), float(data.error[b])
         rows.append(
             {
                 **keys,
-                "first_rank": edges[b],
-                "last_rank": edges[b + 1] - 1,
+                "first_rank": float(firsts[b]),
+                "last_rank": float(lasts[b]),
                 "rank": float(ranks[b]),
                 "log_magnitude": mean,
                 "log_magnitude_error": error,
@@ -210,7 +230,7 @@ def _bin_rows(
     return rows
 
 
-def _profile_rows(keys: dict[str, Any], usable: _Usable) -> list[Row]:
+def _profile_rows(keys: dict[str, Any], usable: UsableSpectra) -> list[Row]:
     found = profile(usable.magnitudes, PROFILE_BINS)
     columns = ("rank", "log_magnitude", "log_magnitude_error", "slope_rank", "slope", "slope_error")
     return [{**keys, **{c: _finite(getattr(found, c)[b]) for c in columns}} for b in range(len(found.rank))]

@@ -3,9 +3,13 @@
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+import numpy as np
+
 FIRST_LOOK_SIZES = 5
 LARGE_REDUCED_CHI2 = 3.0
 LARGE_DEVIATION = 5.0
+# Estimators, or windows, that differ by more than their errors.
+LARGE_DISAGREEMENT = 2.0
 # Unexplained scatter of log λ that a reader should know of.
 LARGE_SCATTER = 0.03
 # Ratios of neighbouring sizes that differ by more than this are not geometric.
@@ -37,8 +41,14 @@ def warnings_of(row: Mapping[str, Any], left_out: Sequence[int], caveat: str | N
         found.append(f"first look: {len(row['sizes'])} sizes, a published number needs {FIRST_LOOK_SIZES}")
     if row["scatter"] > LARGE_SCATTER:
         found.append(
-            f"steps in the spectrum: up to {row['scatter']:.0%} off a power law, beyond statistical error"
+            f"steps in the spectrum: up to {row['scatter']:.0%} off every model, beyond statistical error"
         )
+    if row["other_deviation"] is not None and abs(row["other_deviation"]) > LARGE_DISAGREEMENT:
+        other = (
+            f"{row['other_exponent']:.3f} ± {np.hypot(row['other_statistical'], row['other_systematic']):.3f}"
+        )
+        found.append(f"the other estimator gives {other}, {abs(row['other_deviation']):.1f} σ away")
+    found += row["dimension_sentences"]
     if row["reduced_chi2"] > LARGE_REDUCED_CHI2:
         found.append(f"the sizes follow no single power: χ²/ν = {row['reduced_chi2']:.1f}")
     ratios = [b / a for a, b in zip(row["sizes"][:-1], row["sizes"][1:], strict=True)]
