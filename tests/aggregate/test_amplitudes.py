@@ -159,6 +159,7 @@ def test_what_cannot_be_extrapolated():
         amplitudes_at_infinite_size((10, 20), [np.zeros((4, 2)), np.zeros((4, 3))], 0)
 
 
+@pytest.mark.slow
 def test_small_sprinklings_reach_the_exact_law_of_the_plane():
     # Pauli–Jordan spectrum, Johnston 2010; Afshordi et al. 2012
     logs = []

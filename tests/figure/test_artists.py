@@ -49,7 +49,9 @@ def compare(figure, expected: dict[str, Points], levels: dict[str, float], windo
         for patch in found[name]:
             assert isinstance(patch, Rectangle)
             # a rectangle keeps its width, not its far end
-            assert (patch.get_x(), patch.get_x() + patch.get_width()) == pytest.approx((first, last), rel=1e-14)
+            assert (patch.get_x(), patch.get_x() + patch.get_width()) == pytest.approx(
+                (first, last), rel=1e-14
+            )
 
 
 def ends(rows: pd.DataFrame) -> dict[str, tuple[float, float]]:

@@ -83,14 +83,13 @@ def test_amplitudes(study: Drawn, operator) -> None:
     factor = table["smooth_rank"].to_numpy() ** power
     found = layer(numbers, "cutoff").rename(columns={"scaled": "exponent"})
     same(found["power"], power)
-    same_errors(
-        found, table["cutoff"] * factor, table["statistical"] * factor, table["systematic"] * factor
-    )
+    same_errors(found, table["cutoff"] * factor, table["statistical"] * factor, table["systematic"] * factor)
     known = table["law"].notna().to_numpy()
     law = layer(numbers, "law")
     same(law["scaled"], (table["law"] * factor)[known])
     assert law["standing"].tolist() == table["law_standing"][known].tolist()
     assert 0 < known.sum() < len(known)
+
 
 @pytest.mark.parametrize("operator", OPERATORS, ids=lambda o: o.name)
 def test_local_slope(study: Drawn, operator) -> None:

@@ -111,7 +111,7 @@ def test_failures_have_rows_with_a_reason():
 
 
 def test_a_version_belongs_to_a_stage(monkeypatch):
-    """Every stage that has requests has a version, and a new one makes the tables of that stage stale alone."""
+    """Every stage that has requests has a version; a new one makes the tables of that stage stale alone."""
     stages = {request.stage() for request in Request.__subclasses__()}
     assert set(VERSIONS) == stages
     assert {table.stage for table in TABLES.values()} == stages - {"figure"}
@@ -135,7 +135,7 @@ def test_what_has_an_estimator_says_which():
 
 
 def test_what_has_no_value_may_be_null_and_nothing_else():
-    """Rows of amplitudes and differences exist only where there is a number; those of diagnostics have one."""
+    """Rows of amplitudes and differences exist only where there is a number."""
     for table, nullable in (
         (CUTOFFS, {"dimension"}),
         (AMPLITUDES, {"dimension", "slope_expected", "law", "law_standing", "law_source", "deviation"}),

@@ -79,7 +79,8 @@ SCALARS = (
     | st.text(max_size=12)
     | st.sampled_from(
         ["", "symmetric", "symmetric-negative", "singular", "link",
-         "fixed", "full", "power", "logarithm", "knee", "smooth-count", "diagonal", "minkowski-box", "n^0.5", "2 * n^1", "1e-3",
+         "fixed", "full", "power", "logarithm", "knee", "smooth-count", "diagonal", "minkowski-box",
+         "n^0.5", "2 * n^1", "1e-3",
          "../x", "64", -1, 0, 1, 2, 3, 64, 0.5, 1.0, 10**7, 10**400,
          "\ud800", "a\nb", "9" * 400 + " * n^0.5"]
     )

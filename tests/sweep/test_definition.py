@@ -36,8 +36,8 @@ CAUSAL_SYMMETRIC = OperatorChoice("causal", "symmetric")
 CAUSAL_ANTISYMMETRIC = OperatorChoice("causal", "antisymmetric")
 LINK_SYMMETRIC = OperatorChoice("link", "symmetric")
 LINK_ANTISYMMETRIC = OperatorChoice("link", "antisymmetric")
-LOW, MIDDLE = Growth(0.25, 0.5), Growth(0.4, 0.5)
-HIGH, HIGHER = Growth(0.25, 0.75), Growth(0.35, 0.75)
+LOW, MIDDLE = Growth(0.5, 0.33), Growth(0.7, 0.33)
+HIGH, HIGHER = Growth(0.5, 0.5), Growth(0.7, 0.5)
 DEFAULT_WINDOWS = WindowSettings(
     (WindowRule(LOW, HIGH), WindowRule(LOW, HIGHER), WindowRule(MIDDLE, HIGH), WindowRule(MIDDLE, HIGHER)),
     smallest_rank=2,
@@ -152,15 +152,15 @@ RESOLVED = {
     "leading-spectra": sweep(
         "leading", 1, (diamond(2),), (512, 724, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
         windows=replace(DEFAULT_WINDOWS, estimator="rank-bins"),
-        spectrum=SpectrumSettings("leading", 63, 1e-9, "auto"),
+        spectrum=SpectrumSettings("leading", 22, 1e-9, "auto"),
     ),
     "leading-for-a-smooth-count": sweep(
         "leading-smooth", 1, (diamond(2),), (512, 724, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
-        spectrum=SpectrumSettings("leading", 191, 1e-9, "auto"),
+        spectrum=SpectrumSettings("leading", 68, 1e-9, "auto"),
     ),
     "leading-with-tolerance": sweep(
         "leading-tolerance", 1, (diamond(2),), (256, 512, 1024), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
-        spectrum=SpectrumSettings("leading", 200, 1e-10, "auto"),
+        spectrum=SpectrumSettings("leading", 100, 1e-10, "auto"),
     ),
     "full-by-lapack": sweep(
         "full-by-lapack", 1, (diamond(2),), (64, 128, 256), (4, 4, 4), (CAUSAL_ANTISYMMETRIC,),
@@ -286,7 +286,7 @@ def test_invalid_files_are_refused_with_place_found_and_allowed(path: Path) -> N
         ("leading-count-below-windows", "end the windows earlier, or ask for more"),
         (
             "leading-count-below-smooth-count",
-            "end the windows earlier, or ask for more; windows.estimator: rank-bins takes 22",
+            "end the windows earlier, or ask for more; windows.estimator: rank-bins takes 11",
         ),
         ("leading-count-null", "leave the field out for its default"),
         ("tolerance-read-as-text", "write 1.0e-9"),
@@ -378,16 +378,15 @@ def test_leading_spectra_fit_where_full_ones_do_not(monkeypatch: pytest.MonkeyPa
     values.update(sizes=100_000, replicates=3)
     del values["windows"]
     values["ensembles"] = [{"ensemble": "minkowski-diamond", "dimension": [2, 4]}]
-    values["windows"] = {"estimator": "rank-bins"}
     values["spectrum"] = {"extent": "auto"}
     (spectrum,) = resolve_sweep(values).spectra
     assert (spectrum.extent, spectrum.tolerance) == ("leading", 1e-9)
-    # 0.35 n^0.75 = 1968.2 with its end excluded, 1/16 more, in eights
-    assert spectrum.count == 2096
-    values["windows"] = {"to": "0.35 * n^0.6"}
+    # 0.7 n^0.5 = 221.4, 3.3 times as many for the smooth count, in eights
+    assert spectrum.count == 736
+    values["windows"] = {"estimator": "rank-bins"}
     (spectrum,) = resolve_sweep(values).spectra
-    # 0.35 n^0.6 = 350, 3.3 times as many for the smooth count, in eights
-    assert (spectrum.extent, spectrum.count) == ("leading", 1160)
+    # its end excluded, 1/16 more, in eights
+    assert (spectrum.extent, spectrum.count) == ("leading", 240)
     values["spectrum"] = {"extent": "full"}
     assert "whose full spectrum needs 74" in fault_of(values).found
     # fewer than 80,096 elements: a full computation, of which the ends are kept

@@ -20,30 +20,28 @@ def decided(
     return resolve_spectra(SpectrumFields(extent="auto", **fields), sizes, windows)
 
 
-# Sizes in ratios of √2, and then of two, with 0.35 n^0.75, the end of the widest window by default. Its smooth
-# count takes so many ranks that a full spectrum is always quicker.
+# Sizes in ratios of √2, and then of two, with 0.7 n^0.5, the end of the widest window by default: by the
+# smooth count, which is the default too, and by bins of rank.
 BY_DEFAULT = {
-    256: None, 362: None, 512: None, 724: None, 1024: None, 1448: None, 2048: None, 2896: 152, 4096: 192,
-    5793: 248, 8192: 320, 16_384: 544, 32_768: 912, 65_536: 1528, 131_072: 2568,
+    256: None, 362: None, 512: None, 724: None, 1024: None, 1448: None, 2048: None, 2896: 128, 4096: 152,
+    5793: 176, 8192: 216, 16_384: 296, 32_768: 424, 65_536: 592, 131_072: 840,
 }  # fmt: skip
-# The same with windows that end at 0.35 n^0.6.
-SHORTER = {
-    256: None, 362: None, 512: None, 724: None, 1024: None, 1448: None, 2048: None, 2896: 144, 4096: 176,
-    5793: 216, 8192: 264, 16_384: 392, 32_768: 592, 65_536: 904, 131_072: 1360,
+BY_BINS = {
+    256: None, 362: None, 512: None, 724: None, 1024: 24, 1448: 32, 2048: 40, 2896: 40, 4096: 48,
+    5793: 64, 8192: 72, 16_384: 96, 32_768: 136, 65_536: 192, 131_072: 272,
 }  # fmt: skip
 
 
-@pytest.mark.parametrize(
-    ("estimator", "power", "counts"),
-    [
-        ("rank-bins", 0.75, BY_DEFAULT),
-        ("smooth-count", 0.75, dict.fromkeys(BY_DEFAULT)),
-        ("smooth-count", 0.6, SHORTER),
-    ],
-)
-def test_sizes_with_the_same_windows(estimator: str, power: float, counts: dict[int, int | None]) -> None:
-    found = decided(list(counts), Growth(0.35, power), estimator)
+@pytest.mark.parametrize(("estimator", "counts"), [("smooth-count", BY_DEFAULT), ("rank-bins", BY_BINS)])
+def test_sizes_with_the_default_windows(estimator: str, counts: dict[int, int | None]) -> None:
+    found = decided(list(counts), Growth(0.7, 0.5), estimator)
     assert {size: each.count for size, each in zip(counts, found, strict=True)} == counts
+
+
+def test_windows_may_be_so_long_that_their_smooth_count_takes_everything() -> None:
+    found = decided(list(BY_DEFAULT), Growth(0.35, 0.75), "smooth-count")
+    assert {each.extent for each in found} == {"full"}
+    assert found[0].why == "80 of each sign are too many: they take 736 elements"
 
 
 @pytest.mark.parametrize(

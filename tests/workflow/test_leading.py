@@ -27,7 +27,11 @@ def finished(tmp_path_factory: pytest.TempPathFactory) -> Study:
             "replicates": 4,
             "operators": [{"matrix": "causal", "part": "symmetric"}],
             "spectrum": {"extent": "leading", "count": COUNT},
-            "windows": {"from": "0.25 * n^0.5", "to": ["0.12 * n^0.75", "0.14 * n^0.75"]},
+            "windows": {
+                "from": "0.25 * n^0.5",
+                "to": ["0.12 * n^0.75", "0.14 * n^0.75"],
+                "estimator": "rank-bins",
+            },
         },
     )
     study.compute()

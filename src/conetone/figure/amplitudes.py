@@ -1,4 +1,4 @@
-"""Figure `amplitudes`: cut-offs at infinite size times ρ^α, which a power law makes a constant, and the law."""
+"""Figure `amplitudes`: cut-offs at infinite size times ρ^α, constant for a power law, and the law."""
 
 from typing import Any
 
@@ -26,8 +26,9 @@ POINTS: dict[str, Any] = {
     "linestyle": "none",
 }
 NOTE = (
-    "Cut-offs $\\Lambda$ where the smooth count of the spectrum is $\\rho$, extrapolated to infinite size in $1/n$;"
-    " $\\alpha$ as expected, or as measured where nothing is. Bars: total error; ticks across: statistical error."
+    "Cut-offs $\\Lambda$ where the smooth count of the spectrum is $\\rho$, extrapolated to infinite size in"
+    " $1/n$; $\\alpha$ as expected, or as measured where nothing is. Bars: total error; ticks across:"
+    " statistical error."
 )
 
 

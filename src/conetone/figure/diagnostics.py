@@ -31,8 +31,8 @@ COLOUR = look_of_category(0).colour
 QUOTED: dict[str, Any] = {"color": INK, "linewidth": 0.6}
 POINTS: dict[str, Any] = {"color": COLOUR, "marker": "o", "markersize": 3.2, "markeredgewidth": 0}
 NOTE = (
-    "Left, from the sizes from this one on, bars: total error, ticks across: statistical error; middle, with this"
-    " $\\omega$ alone; $\\chi^2/\\nu$ of the scaling fits. Right, how well local slopes of all sizes fall onto one"
+    "Left, from this size on, bars: total error, ticks across: statistical error; middle, with this $\\omega$"
+    " alone; $\\chi^2/\\nu$ of the scaling fits. Right, how well local slopes of all sizes fall onto one"
     " curve of rank over $n^b$, after Houdayer and Hartmann: 1 is as well as errors allow."
 )
 
@@ -181,7 +181,7 @@ def _set_columns(page: Page, numbers: pd.DataFrame) -> None:
 
 
 def _apart(sizes: list[float], inches: float) -> list[float]:
-    """Those of rising sizes whose names do not touch along a logarithmic axis; the smallest are kept first."""
+    """Those of rising sizes whose names do not touch along a logarithmic axis, the smallest first."""
     decade = inches / log10(ROOM**2 * sizes[-1] / sizes[0])
     kept = sizes[:1]
     for size in sizes[1:]:

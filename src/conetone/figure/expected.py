@@ -50,7 +50,9 @@ def draw_expected(
 def expected_handles(numbers: pd.DataFrame) -> list[Line2D]:
     """Legend entries of the standings that occur."""
     standings = sorted(set(layer(numbers, "expected")["standing"]))
-    return [Line2D([], [], label=f"expected, {standing}", **standing_line(standing)) for standing in standings]
+    return [
+        Line2D([], [], label=f"expected, {standing}", **standing_line(standing)) for standing in standings
+    ]
 
 
 def standing_line(standing: str) -> dict[str, Any]:

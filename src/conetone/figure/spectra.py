@@ -96,8 +96,8 @@ def draw_spectra(numbers: pd.DataFrame, tables: ClosingTables, operator: Operato
 def _residuals_in_words(tables: ClosingTables) -> str:
     if any(row["estimator"] == "smooth-count" for row in tables.bins):
         return (
-            "Residual: (mean − fit) of $\\log\\,\\Lambda$ at smooth ranks over its statistical error $\\sigma$,"
-            " at the rank where a power law has $|\\lambda_r| = \\Lambda$;"
+            "Residual: (mean − fit) of $\\log\\,\\Lambda$ at smooth ranks over its statistical error"
+            " $\\sigma$, at the rank where a power law has $|\\lambda_r| = \\Lambda$;"
         )
     return "Residual: (mean − fit) of $\\log\\,|\\lambda_r|$ over its statistical error $\\sigma$;"
 

@@ -137,9 +137,7 @@ def _fit(vector: DataVector, model: Model, design: Floats, offset: Floats, insid
     return generalised_least_squares(design, values, whole)
 
 
-def _own_scatter(
-    vector: DataVector, design: Floats, offset: Floats, fit: LinearFit, inside: slice
-) -> Floats:
+def _own_scatter(vector: DataVector, design: Floats, offset: Floats, fit: LinearFit, inside: slice) -> Floats:
     """Scatter of the means about a fit, shape (1 + replicates,).
 
     Noise common to all ranks makes standard errors large and hides from τ what a fit leaves over, while it does
