@@ -1,4 +1,4 @@
-"""The sweep for publication, run whole (half an hour and more): exact laws, and errors as small as promised."""
+"""The sweep for publication, run whole (half an hour and more): exact laws, and errors as promised."""
 
 import subprocess
 from pathlib import Path

@@ -140,8 +140,8 @@ def _fit(vector: DataVector, model: Model, design: Floats, offset: Floats, insid
 def _own_scatter(vector: DataVector, design: Floats, offset: Floats, fit: LinearFit, inside: slice) -> Floats:
     """Scatter of the means about a fit, shape (1 + replicates,).
 
-    Noise common to all ranks makes standard errors large and hides from τ what a fit leaves over, while it does
-    not enter the scatter of exponents: residuals tell of a misfit that χ² does not see.
+    Noise common to all ranks makes standard errors large and hides from τ what a fit leaves over, while it
+    does not enter the scatter of exponents: residuals tell of a misfit that χ² does not see.
     """
     residuals = vector.means[:, inside] - offset - fit.parameters @ design.T
     degrees = design.shape[0] - design.shape[1]

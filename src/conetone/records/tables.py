@@ -419,7 +419,7 @@ DIAGNOSTICS = Table(
         Column(
             "kind",
             TEXT,
-            "smallest-size: α∞ from the sizes from this one on; omega: α∞ with this ω alone; collapse: quality"
+            "smallest-size: α∞ from this size on; omega: α∞ with this ω alone; collapse: quality"
             " of the collapse of local slopes against rank/n^power; sequence: noise-free extrapolation",
         ),
         Column("abscissa", REAL, "the smallest size, the ω, or the power"),
