@@ -145,7 +145,7 @@ def _own_scatter(vector: DataVector, design: Floats, offset: Floats, fit: Linear
     """
     residuals = vector.means[:, inside] - offset - fit.parameters @ design.T
     degrees = design.shape[0] - design.shape[1]
-    return np.sqrt((residuals**2).sum(axis=-1) / degrees)
+    return np.asarray(np.sqrt((residuals**2).sum(axis=-1) / degrees))
 
 
 def _with_priors(
