@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 
-from conetone.operators.catalogue import PARTS
+from conetone.operators.catalogue import SPECTRAL_PARTS
 from conetone.records.files import read_rows
 from conetone.stages.sprinkle import sprinkle_block
 from conetone.sweep.points import EnsembleChoice, Point
@@ -37,7 +37,7 @@ def test_spectra_have_the_same_bits_with_more_threads(
     sprinkle_block(SprinkleRequest(POINT, 1, 0, 1), Path("orders.parquet"))
     jobs: list[str] = []
     for extent, spectrum in SPECTRA.items():
-        for part in PARTS:
+        for part in SPECTRAL_PARTS:
             request = DiagonaliseRequest(POINT, "causal", part, spectrum, 0, 1).text()
             for threads in ("1", "2"):
                 jobs += [request, f"{extent}-{part}-{threads}.parquet", threads]
@@ -45,7 +45,7 @@ def test_spectra_have_the_same_bits_with_more_threads(
     environment = {**os.environ, "OPENBLAS_NUM_THREADS": "2", "OMP_NUM_THREADS": "2"}
     subprocess.run([sys.executable, "-c", JOBS, *jobs], check=True, env=environment)
     for extent in SPECTRA:
-        for part in PARTS:
+        for part in SPECTRAL_PARTS:
             (one,), (two,) = (read_rows(Path(f"{extent}-{part}-{threads}.parquet")) for threads in (1, 2))
             assert (one["status"], one["extent"], one["threads"], two["threads"]) == ("ok", extent, 1, 1)
             assert one["eigenvalues"] == two["eigenvalues"]

@@ -120,7 +120,10 @@ def test_amplitudes_are_those_of_the_spectra_and_deviate_from_the_law_in_their_e
         assert row["law"] == pytest.approx(law, rel=5e-3)
         assert row["law_standing"] == "heuristic"
         assert row["deviation"] == pytest.approx(np.log(row["cutoff"] / row["law"]) * row["cutoff"] / total)
-        assert row["slope_expected"] == pytest.approx(finite_size_coefficient(0.75) * row["smooth_rank"])
+        # Γ(1 + 4/3)/Γ(1 + 2/3)²: cut-offs shift more than the eigenvalue of that rank (derived)
+        assert row["slope_expected"] == pytest.approx(
+            1.4609 * finite_size_coefficient(0.75) * row["smooth_rank"], rel=1e-4
+        )
         # further down the smallest sizes are at their end
         if row["smooth_rank"] <= 8:
             assert abs(row["cutoff"] - law / 0.2111 / 3) < 5 * total + 5e-3 * law

@@ -56,6 +56,18 @@ def without_smallest(estimates: SizeEstimates, count: int) -> SizeEstimates:
     )
 
 
+def only_fitted(estimates: SizeEstimates) -> SizeEstimates:
+    """The same series without the sizes at which nothing has a fit."""
+    fitted = np.isfinite(estimates.exponent[0]).any(axis=-1)
+    by_size = ("exponent", "statistical", "misfit", "chi2")
+    return replace(
+        estimates,
+        sizes=estimates.sizes[fitted],
+        bins_cut=estimates.bins_cut[fitted],
+        **{name: getattr(estimates, name)[:, fitted] for name in by_size},
+    )
+
+
 @dataclass(frozen=True)
 class Averages:
     """A model average and the variance it hides: spread between candidates, and their misfits.

@@ -9,10 +9,12 @@ from numpy.typing import NDArray
 from conetone.aggregate.resample import Candidate, Measured, measure, stack_copies, variance_of_copies
 from conetone.aggregate.scaling import (
     SMALLEST_NUMBER_OF_SIZES,
+    Averages,
     Extrapolation,
     SizeEstimates,
     average_at_sizes,
     extrapolate,
+    only_fitted,
 )
 from conetone.fit.models import MODELS
 from conetone.fit.size import SizeFits, WindowSettings
@@ -64,8 +66,10 @@ def series_exponent(
 ) -> SeriesExponent:
     """Extrapolate the candidates of one series; at least one of them has a fit."""
     estimates = stack_copies(sizes, replicates, candidates)
-    found = extrapolate(estimates, omegas, most_sizes_cut)
-    averages = found.at_sizes if found else average_at_sizes(estimates)
+    # a size that only the other estimator fits is none of this one
+    kept = only_fitted(estimates)
+    found = extrapolate(kept, omegas, most_sizes_cut)
+    averages = _at_all(average_at_sizes(kept), np.isin(estimates.sizes, kept.sizes))
     logs = np.array([candidate.log_rank for candidate in candidates])
     hidden = HIDDEN_LOGARITHM * float((found.weights / logs).sum()) if found else 0.0
     return SeriesExponent(
@@ -78,6 +82,14 @@ def series_exponent(
         hidden=hidden,
         reason=None if found else _why_not(estimates),
     )
+
+
+def _at_all(averages: Averages, fitted: NDArray[np.bool_]) -> Averages:
+    """Averages of some sizes laid out over all of them, NaN elsewhere."""
+    shape = (len(averages.value), len(fitted))
+    value, hidden = np.full(shape, np.nan), np.full(shape, np.nan)
+    value[:, fitted], hidden[:, fitted] = averages.value, averages.hidden_variance
+    return Averages(value, hidden)
 
 
 def _widened(measured: Measured, systematic: float) -> Measured:

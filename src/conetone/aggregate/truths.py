@@ -71,7 +71,7 @@ class Truth:
 def truths_for(*, logarithm: bool, dimension: int | None) -> Mapping[str, Truth]:
     """The truths for series whose models hold a logarithm, or for others, of a dimension or without one.
 
-    Multiplets are those of rotations in four and five dimensions, and go into series of as many or more.
+    Multiplets, those of rotations in four and five dimensions, go into series of four dimensions and more.
     """
     if logarithm:
         return LOGARITHM_TRUTHS

@@ -16,8 +16,8 @@ from conetone.sprinkle.catalogue import PARAMETER_NAMES
 VERSIONS = {
     "sprinkle": 2,
     "diagonalise": 2,
-    "fit": 3,
-    "aggregate": 3,
+    "fit": 4,
+    "aggregate": 4,
     "figure": 3,
     "inject": 1,
     "coverage": 1,
@@ -353,7 +353,12 @@ EXPONENTS = Table(
         ),
         Column("measured_dimension_low", REAL, "lower end of its 68 % interval", nullable=True),
         Column("measured_dimension_high", REAL, "upper end of its 68 % interval", nullable=True),
-        Column("myrheim_meyer_dimension", REAL, "dimension of the ordering fraction", nullable=True),
+        Column(
+            "myrheim_meyer_dimension",
+            REAL,
+            "dimension of the diamond with this ordering fraction, null for other regions",
+            nullable=True,
+        ),
         Column("myrheim_meyer_error", REAL, "its standard error", nullable=True),
         Column(
             "dimension_deviation",
@@ -400,7 +405,7 @@ AMPLITUDES = Table(
         Column(
             "slope_expected",
             REAL,
-            "−(π/α) cot(π/2α) ρ, what sampling n points does in second order, overlaps being one (derived)",
+            "−(π/α) cot(π/2α) Γ(1 + 1/α)/Γ(1 + 1/2α)² ρ, by sampling n points, to second order (derived)",
             "elements",
             nullable=True,
         ),
@@ -434,8 +439,16 @@ DIFFERENCES = Table(
     "differences",
     "aggregate",
     (
-        Column("series", TEXT, "id of one series"),
-        Column("other_series", TEXT, "id of another of the sweep"),
+        *SERIES_KEYS,
+        *(
+            Column(
+                f"other_{column.name}",
+                column.type,
+                f"{column.name} of the other series",
+                nullable=column.nullable,
+            )
+            for column in SERIES_KEYS
+        ),
         Column("difference", REAL, "exponent of the one less that of the other"),
         Column("statistical", REAL, "jackknife error; orders that both share make it small"),
         Column("systematic", REAL, "systematic errors of both in quadrature"),

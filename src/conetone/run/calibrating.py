@@ -56,7 +56,7 @@ def calibrate_sweep(
         print_calibration_json(outcome)
     elif not quiet:
         print_calibration(outcome)
-    return 1 if outcome.broken else 0
+    return 1 if outcome.broken or outcome.empty else 0
 
 
 def _require_spectra(sweep_file: Path, results: Path, folder: Path, calibration: Calibration) -> None:

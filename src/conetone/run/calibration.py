@@ -52,6 +52,11 @@ class CalibrationOutcome:
         """Rows of the quoted estimator whose errors are smaller than promised."""
         return [row for row in self.rows if row["quoted"] and row["verdict"] == "too narrow"]
 
+    @property
+    def empty(self) -> list[dict[str, Any]]:
+        """Rows of the quoted estimator without a single injection that has an exponent."""
+        return [row for row in self.rows if row["quoted"] and not row["injections"]]
+
     def tables(self) -> Iterator[tuple[dict[str, Any], list[dict[str, Any]]]]:
         """For each series and estimator its first row, then all of them."""
         for series, estimator in dict.fromkeys((row["series"], row["estimator"]) for row in self.rows):
@@ -86,6 +91,8 @@ def print_calibration(outcome: CalibrationOutcome) -> None:
         if broken
         else f"\nErrors keep what is promised in all {judged} rows of the quoted estimator."
     )
+    if outcome.empty:
+        console.print(f"Nothing was measured in {len(outcome.empty)} rows: see their reasons.")
     console.print(f"Table:  {outcome.folder / closing_path(CALIBRATION_TABLE)}", soft_wrap=True)
     console.print(
         f"Figure: {outcome.folder / FIGURE_FOLDER / CALIBRATION_TABLE} (.pdf .png .csv)", soft_wrap=True

@@ -1,5 +1,6 @@
 """Rows of `amplitudes`: cut-offs at fixed smooth rank and infinite size, against the amplitude laws."""
 
+from math import gamma
 from typing import Any
 
 import numpy as np
@@ -53,7 +54,7 @@ def amplitude_rows(keys: dict[str, Any], cutoffs: list[dict[str, Any]], most_siz
                 "slope": float(found.coefficient[i]),
                 "slope_statistical": float(found.coefficient_statistical[i]),
                 "slope_systematic": float(found.coefficient_systematic[i]),
-                "slope_expected": finite_size_coefficient(law.exponent) * rank if law else None,
+                "slope_expected": _slope_of_cutoffs(law.exponent) * rank if law else None,
                 "law": float(np.exp(expected[i])) if known else None,
                 "law_standing": law.standing if law and known else None,
                 "law_source": law.source if law and known else None,
@@ -72,6 +73,16 @@ def _logs(size: int, ranks: list[float], by_place: dict[tuple[int, float], dict[
             row = by_place[size, rank]
             logs[:, i] = [row["log_cutoff"], *row["copies"]]
     return logs
+
+
+def _slope_of_cutoffs(exponent: float) -> float:
+    """Shift of log Λ at smooth rank ρ in units of ρ/n, where log λ_r shifts by C r/n.
+
+    A cut-off moves by the mean shift of the eigenvalues about it, weighted by 2z e^−z with z = (Λ/λ_r)²: its
+    mean rank is ρ Γ(1 + 1/α)/Γ(1 + 1/2α)² (derived here).
+    """
+    mean_rank = gamma(1 + 1 / exponent) / gamma(1 + 1 / (2 * exponent)) ** 2
+    return finite_size_coefficient(exponent) * mean_rank
 
 
 def _law_at(law: AmplitudeLaw, ranks: Floats) -> Floats:

@@ -11,6 +11,7 @@ from conetone.aggregate.scaling import (
     SMALLEST_NUMBER_OF_SIZES,
     Extrapolation,
     extrapolate,
+    only_fitted,
     without_smallest,
 )
 from conetone.aggregate.sequence import extrapolate_sequence
@@ -36,14 +37,15 @@ def diagnostic_rows(
     if result is None or result.found is None:
         return rows
     rows += _sequence_rows(keys, result)
+    estimates = only_fitted(result.estimates)
     for count in range(len(result.fitted_sizes) - SMALLEST_NUMBER_OF_SIZES + 1):
         smallest = result.fitted_sizes[count]
-        kept = without_smallest(result.estimates, result.sizes.index(smallest))
+        kept = without_smallest(estimates, count)
         found = extrapolate(kept, settings.omegas, 0)
         if found:
             rows.append(_row(keys, "smallest-size", smallest, found, result.replicates))
     for omega in OMEGAS:
-        found = extrapolate(result.estimates, [omega], settings.most_sizes_cut)
+        found = extrapolate(estimates, [omega], settings.most_sizes_cut)
         if found:
             rows.append(_row(keys, "omega", omega, found, result.replicates))
     return rows

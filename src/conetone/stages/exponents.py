@@ -1,6 +1,6 @@
 """Rows of `exponents` and `differences`: one series each, and what follows from several."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from itertools import combinations
 from typing import Any
 
@@ -63,7 +63,16 @@ def exponent_row(fits: list[dict[str, Any]], request: AggregateRequest, results:
         "status": "failed" if reason else "ok",
         "reason": reason,
         "left_out": [size for size in by_size if size not in sizes],
+        "windows_short": _windows_short(fits, request.estimator, sizes),
     }
+
+
+def _windows_short(fits: list[dict[str, Any]], estimator: Estimator, sizes: Sequence[int]) -> tuple[int, int]:
+    """How many windows with fits have none at the largest size, which weights need, and of how many."""
+    mine = [fit for fit in fits if fit["estimator"] == estimator and fit["status"] == "ok"]
+    fitted = {fit["window"] for fit in mine}
+    reaching = {fit["window"] for fit in mine if fit["size"] == max(sizes, default=0)}
+    return len(fitted - reaching), len(fitted)
 
 
 def _limit_columns(prefix: str, limit: Measured | None) -> dict[str, Any]:
@@ -134,7 +143,8 @@ def add_dimensions(rows: list[dict[str, Any]]) -> None:
     """
     for row in rows:
         ordering = None
-        if row["ordering_fraction"] is not None:
+        # the formula is that of diamonds; orders that resemble no region are asked all the same
+        if row["ordering_fraction"] is not None and ENSEMBLES[row["ensemble"]].region in (None, "diamond"):
             ordering = myrheim_meyer_dimension(row["ordering_fraction"], row["ordering_fraction_error"])
         expected = _spectral(row, ExpectedCurve())
         measured = _spectral(row, _measured_curve(row, rows))
@@ -188,7 +198,7 @@ def add_warnings(rows: list[dict[str, Any]]) -> None:
     for row in rows:
         expected = expected_of(row)
         row["warnings"] = warnings_of(row, row.pop("left_out"), expected.caveat if expected else None)
-        del row["dimension_sentences"]
+        del row["dimension_sentences"], row["windows_short"]
 
 
 def difference_rows(rows: list[dict[str, Any]]) -> list[Row]:
@@ -201,8 +211,8 @@ def difference_rows(rows: list[dict[str, Any]]) -> list[Row]:
         ratio = derive(lambda a, b: a / b if b else float("nan"), pair)
         found.append(
             {
-                "series": one["series"],
-                "other_series": other["series"],
+                **{column.name: one[column.name] for column in SERIES_KEYS},
+                **{f"other_{column.name}": other[column.name] for column in SERIES_KEYS},
                 "difference": difference.value,
                 "statistical": difference.statistical,
                 "systematic": difference.systematic,

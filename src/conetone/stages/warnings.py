@@ -43,6 +43,9 @@ def warnings_of(row: Mapping[str, Any], left_out: Sequence[int], caveat: str | N
         found.append(
             f"steps in the spectrum: up to {row['scatter']:.0%} off every model, beyond statistical error"
         )
+    short, windows = row["windows_short"]
+    if short:
+        found.append(f"{short} of {windows} windows have no fit at the largest size and do not count")
     if row["other_deviation"] is not None and abs(row["other_deviation"]) > LARGE_DISAGREEMENT:
         other = (
             f"{row['other_exponent']:.3f} ± {np.hypot(row['other_statistical'], row['other_systematic']):.3f}"
