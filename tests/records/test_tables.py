@@ -87,9 +87,8 @@ def test_only_time_and_memory_are_measured(table):
 @pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))
 def test_key_columns(table):
     columns = {column.name: column for column in table.columns}
-    if table is DIFFERENCES:  # of two series, whose keys stand in `exponents`
-        assert {"series", "other_series"} < set(columns)
-        return
+    if table is DIFFERENCES:
+        assert {f"other_{column.name}" for column in SERIES_KEYS} < set(columns)
     assert not columns["ensemble"].nullable
     for name in ("dimension", *PARAMETER_NAMES):
         assert columns[name].nullable  # an ensemble need not have it
@@ -123,7 +122,7 @@ def test_a_version_belongs_to_a_stage(monkeypatch):
 
 def test_every_table_of_a_series_begins_with_its_keys():
     keys = [column.name for column in SERIES_KEYS]
-    for name in {*PIECE_TABLES, *CLOSING_TABLES} - {"differences"}:
+    for name in {*PIECE_TABLES, *CLOSING_TABLES}:
         assert [column.name for column in TABLES[name].columns[: len(keys)]] == keys
 
 
@@ -140,7 +139,8 @@ def test_what_has_no_value_may_be_null_and_nothing_else():
         (CUTOFFS, {"dimension"}),
         (AMPLITUDES, {"dimension", "slope_expected", "law", "law_standing", "law_source", "deviation"}),
         (DIAGNOSTICS, {"dimension", "exponent", "statistical", "systematic", "quality"}),
-        (DIFFERENCES, set()),
+        (DIFFERENCES, {"dimension", "other_dimension"}),
     ):
         found = {column.name for column in table.columns if column.nullable}
-        assert found - set(PARAMETER_NAMES) == nullable - set(PARAMETER_NAMES), table.name
+        keys = {*PARAMETER_NAMES, *(f"other_{name}" for name in PARAMETER_NAMES)}
+        assert found - keys == nullable - keys, table.name

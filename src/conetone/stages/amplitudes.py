@@ -14,6 +14,8 @@ from conetone.sprinkle.catalogue import ENSEMBLES
 
 Floats = NDArray[np.float64]
 
+# Nearer to the end of a spectrum than n over this, cut-offs are no line in 1/n.
+DEEPEST = 8
 # Copies of a mean of two replicates have no scatter of their own.
 FEWEST_REPLICATES, FEWEST_SIZES = 3, 3
 # Eigenvalues of a law for each smooth rank wanted: its smooth count is completed beyond them.
@@ -22,6 +24,7 @@ LAW_LENGTH = 4 * REACH
 
 def amplitude_rows(keys: dict[str, Any], cutoffs: list[dict[str, Any]], most_sizes_cut: int) -> list[Row]:
     """One row for each smooth rank that at least three sizes reach, the largest among them."""
+    cutoffs = [row for row in cutoffs if DEEPEST * row["smooth_rank"] <= row["size"]]
     sizes = sorted({row["size"] for row in cutoffs if len(row["copies"]) >= FEWEST_REPLICATES})
     by_place = {(row["size"], row["smooth_rank"]): row for row in cutoffs}
     ranks = [
